@@ -1,0 +1,30 @@
+//! nightwright decides, night after night, which star a small robotic spectroscopic telescope
+//! observes, and keeps the record of what was done and what was lost.
+//!
+//! The house has floors; imports run downwards only (`tests/house.rs` sees to it):
+//!
+//! | floor | folders |
+//! | --- | --- |
+//! | 7 | `cli` |
+//! | 6 | `daemon`, `season` |
+//! | 5 | `ledger`, `devices`, `sim` |
+//! | 4 | [`ports`] |
+//! | 3 | [`night`], `settings` |
+//! | 2 | [`score`], `plan`, `audit` |
+//! | 1 | [`ephemeris`], [`catalogue`], [`weather`], [`record`] |
+//! | 0 | [`units`], [`time`] |
+//!
+//! Floors 0 to 3 are pure: no file, socket, clock, log, print or environment; `now` is an argument.
+
+#![forbid(unsafe_code)]
+#![deny(missing_docs)]
+
+pub mod catalogue;
+pub mod ephemeris;
+pub mod night;
+pub mod ports;
+pub mod record;
+pub mod score;
+pub mod time;
+pub mod units;
+pub mod weather;
