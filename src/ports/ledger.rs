@@ -26,6 +26,15 @@ pub enum LedgerFault {
         /// What was found.
         detail: String,
     },
+    /// The batch gainsays what is already kept (a lease twice, a revision twice): nothing of it was
+    /// kept.
+    #[error("the ledger {path} already holds something else: {detail}")]
+    Contradicted {
+        /// File.
+        path: String,
+        /// Which rule of the record was broken.
+        detail: String,
+    },
     /// Reading failed.
     #[error("the ledger {path} cannot be read")]
     Unreadable {
@@ -40,9 +49,11 @@ pub enum LedgerFault {
 /// The record of nights.
 pub trait Ledger {
     /// Keeps the facts, all or none. When it returns `Ok`, they are on disk and survive a power cut.
+    /// The end of a visit under a report key that the ledger already holds for that visit is left
+    /// out: a report counts once, however often it comes.
     ///
     /// # Errors
-    /// [`LedgerFault::Unwritable`]; nothing of the batch was kept.
+    /// [`LedgerFault::Unwritable`] or [`LedgerFault::Contradicted`]; nothing of the batch was kept.
     fn append(&mut self, night: NightDate, facts: &[Fact]) -> Result<(), LedgerFault>;
 
     /// The facts of a night in the order in which they were kept; empty for an unknown night.
