@@ -167,6 +167,17 @@ pub enum Fact {
         /// When.
         at: Utc,
     },
-    /// The night is over and accounted for.
+    /// Darkness began: from here on visits may be handed out unless something holds the night.
+    DarknessBegan {
+        /// When.
+        at: Utc,
+    },
+    /// Darkness ended: no visit to a star begins any more.
+    DarknessEnded {
+        /// When.
+        at: Utc,
+    },
+    /// The night is over and accounted for. A second one supersedes the first (a late report has
+    /// changed the account).
     NightClosed(NightSummary),
 }
