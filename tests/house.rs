@@ -120,8 +120,11 @@ fn floors() -> BTreeMap<&'static str, u8> {
     FLOORS.iter().copied().collect()
 }
 
-/// (file, its folder, its lines of code) of every file that stands on a floor.
-fn house() -> Vec<(PathBuf, String, Vec<(usize, String)>)> {
+/// A file, its folder, its lines of code.
+type File = (PathBuf, String, Vec<(usize, String)>);
+
+/// Every file that stands on a floor.
+fn house() -> Vec<File> {
     let mut files = Vec::new();
     source_files(&source_root(), &mut files);
     files.sort();
