@@ -5,11 +5,11 @@
 //!
 //! | floor | folders |
 //! | --- | --- |
-//! | 7 | `cli` |
+//! | 7 | [`cli`] |
 //! | 6 | `daemon`, `season` |
 //! | 5 | `ledger`, `devices`, `sim` |
 //! | 4 | [`ports`] |
-//! | 3 | [`night`], `settings` |
+//! | 3 | [`night`], [`settings`] |
 //! | 2 | [`score`], `plan`, `audit` |
 //! | 1 | [`ephemeris`], [`catalogue`], [`weather`], [`record`] |
 //! | 0 | [`units`], [`time`] |
@@ -20,11 +20,13 @@
 #![deny(missing_docs)]
 
 pub mod catalogue;
+pub mod cli;
 pub mod ephemeris;
 pub mod night;
 pub mod ports;
 pub mod record;
 pub mod score;
+pub mod settings;
 pub mod time;
 pub mod units;
 pub mod weather;

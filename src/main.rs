@@ -1,2 +1,7 @@
-//! Entry point.
-fn main() {}
+//! Entry point: everything is in the library.
+
+use std::process::ExitCode;
+
+fn main() -> ExitCode {
+    nightwright::cli::main()
+}

@@ -1,0 +1,110 @@
+//! Floor 7: the command line.
+//!
+//! # Adding a command
+//!
+//! One file, `cli/<command>.rs`, with
+//!
+//! - `pub struct Args` (derives [`clap::Args`]; its doc comment is the help, with an example under
+//!   `after_help`), and
+//! - `pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble>`.
+//!
+//! Then three short lines here: `mod <command>;`, a variant of [`Command`] and an arm in
+//! [`dispatch`]. A command loads the settings with [`load::settings`], prints through
+//! [`output::print`], and says what went wrong with a [`Trouble`], which knows its exit code.
+
+mod check;
+mod init;
+pub mod load;
+pub mod output;
+mod trouble;
+
+use std::path::PathBuf;
+use std::process::ExitCode;
+
+use clap::{Parser, Subcommand};
+
+pub use trouble::{Exit, Trouble};
+
+/// What is said at the foot of the help of the whole program.
+const AFTER_HELP: &str = "\
+Exit codes: 0 fine · 1 the answer is no · 2 misuse or bad input · 3 the machine let us down
+
+This program chooses observations. It does not protect people, the dome or the optics: rain, wind,
+sun and motion interlocks are the observatory's own, and they win.
+
+Example:
+  nightwright init my-survey
+  nightwright check --config my-survey";
+
+/// Decides, night after night, which star a small robotic spectroscopic telescope observes, and
+/// keeps the record.
+#[derive(Debug, Parser)]
+#[command(name = "nightwright", version, after_help = AFTER_HELP)]
+struct Cli {
+    #[command(flatten)]
+    global: Global,
+    #[command(subcommand)]
+    command: Command,
+}
+
+/// What every command takes.
+#[derive(Debug, clap::Args)]
+pub struct Global {
+    /// Configuration folder
+    #[arg(
+        long,
+        global = true,
+        value_name = "DIR",
+        env = "NIGHTWRIGHT_CONFIG",
+        default_value = "config"
+    )]
+    pub config: PathBuf,
+}
+
+/// The commands.
+#[derive(Debug, Subcommand)]
+enum Command {
+    Check(check::Args),
+    Init(init::Args),
+}
+
+fn dispatch(command: &Command, global: &Global) -> Result<Exit, Trouble> {
+    match command {
+        Command::Check(args) => check::run(args, global),
+        Command::Init(args) => init::run(args, global),
+    }
+}
+
+/// Reads the arguments, runs the command, tells what went wrong, and gives the exit code.
+pub fn main() -> ExitCode {
+    let cli = Cli::parse();
+    match dispatch(&cli.command, &cli.global) {
+        Ok(exit) => exit.into(),
+        Err(trouble) => {
+            output::complain(&trouble.to_string());
+            trouble.exit.into()
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use clap::CommandFactory;
+
+    use super::*;
+
+    #[test]
+    fn every_command_shows_an_example() {
+        let mut cli = Cli::command();
+        cli.build();
+        cli.clone().debug_assert();
+        for command in cli.get_subcommands().filter(|c| c.get_name() != "help") {
+            let help = command.clone().render_long_help().to_string();
+            assert!(
+                help.contains("Example"),
+                "{}: no example",
+                command.get_name()
+            );
+        }
+    }
+}

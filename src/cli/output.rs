@@ -1,0 +1,43 @@
+//! Standard output and error, without a panic when the reader has gone.
+
+use std::io::{self, Write};
+
+use super::Trouble;
+
+/// Prints a text to standard output, with a line break at its end. A reader that has gone away
+/// (`| head`) is no trouble.
+///
+/// # Errors
+/// [`Trouble`] when standard output cannot be written for another reason, as on a full disk.
+pub fn print(text: &str) -> Result<(), Trouble> {
+    let mut out = io::stdout().lock();
+    let written = out
+        .write_all(text.as_bytes())
+        .and_then(|()| {
+            if text.ends_with('\n') {
+                Ok(())
+            } else {
+                out.write_all(b"\n")
+            }
+        })
+        .and_then(|()| out.flush());
+    match written {
+        Err(error) if error.kind() != io::ErrorKind::BrokenPipe => {
+            Err(Trouble::machine("standard output cannot be written").because(&error))
+        }
+        _ => Ok(()),
+    }
+}
+
+/// Prints a value as JSON to standard output.
+///
+/// # Errors
+/// As [`print`].
+pub fn print_json(value: &serde_json::Value) -> Result<(), Trouble> {
+    print(&format!("{value:#}"))
+}
+
+/// Prints a text to standard error. When even that fails, nobody is left to be told.
+pub fn complain(text: &str) {
+    let _ = writeln!(io::stderr().lock(), "{text}");
+}
