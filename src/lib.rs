@@ -23,6 +23,7 @@ pub mod catalogue;
 pub mod cli;
 pub mod ephemeris;
 pub mod night;
+pub mod plan;
 pub mod ports;
 pub mod record;
 pub mod score;
