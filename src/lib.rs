@@ -10,7 +10,7 @@
 //! | 5 | `ledger`, `devices`, `sim` |
 //! | 4 | [`ports`] |
 //! | 3 | [`night`], [`settings`] |
-//! | 2 | [`score`], `plan`, `audit` |
+//! | 2 | [`score`], [`plan`], `audit` |
 //! | 1 | [`ephemeris`], [`catalogue`], [`weather`], [`record`] |
 //! | 0 | [`units`], [`time`] |
 //!
