@@ -10,7 +10,7 @@
 //! | 5 | `ledger`, `devices`, `sim` |
 //! | 4 | [`ports`] |
 //! | 3 | [`night`], [`settings`] |
-//! | 2 | [`score`], [`plan`], `audit` |
+//! | 2 | [`score`], `plan`, `audit` |
 //! | 1 | [`ephemeris`], [`catalogue`], [`weather`], [`record`] |
 //! | 0 | [`units`], [`time`] |
 //!
@@ -22,8 +22,8 @@
 pub mod catalogue;
 pub mod cli;
 pub mod ephemeris;
+pub mod ledger;
 pub mod night;
-pub mod plan;
 pub mod ports;
 pub mod record;
 pub mod score;
