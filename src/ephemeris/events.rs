@@ -269,7 +269,8 @@ pub fn darkness(
     Ok(NightSky::of(observer, night)?.darkness(sun_altitude))
 }
 
-fn longest(spans: &SpanSet) -> Option<Span> {
+/// The longest of some spans, the first of equals.
+pub(crate) fn longest(spans: &SpanSet) -> Option<Span> {
     // The first of equals: `max_by_key` alone would take the last.
     spans
         .spans()

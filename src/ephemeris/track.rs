@@ -142,7 +142,8 @@ fn later(epoch: JulianDate, days: f64) -> JulianDate {
 
 /// A star's GCRS direction as it appears from the centre of the Earth (space motion, parallax,
 /// deflection by the Sun, annual aberration): a parabola in each segment. What it leaves out over
-/// a day is 20.5″ · (2π · 0.5/365)³/(9√3), below 1e-5″.
+/// a day is 20.5″ · (2π · 0.5/365)³/(9√3), below 1e-5″; within 10° of the Sun deflection bends more
+/// than that, by up to 0.1″ outside a degree of it.
 #[derive(Clone, Debug)]
 pub(crate) struct StarTrack {
     pub curves: Vec<[Vec3; 3]>,
