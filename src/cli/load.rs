@@ -6,6 +6,7 @@ use std::io::{self, Read};
 use std::path::Path;
 
 use super::{Exit, Global, Trouble, output};
+use crate::ephemeris::{EarthRotation, Observer, RotationQuality};
 use crate::settings::{self, Faults, Finding, Settings, Sources};
 
 /// No file of settings is larger; a device or a core dump in its place is not read to its end.
@@ -27,6 +28,35 @@ pub fn settings(global: &Global) -> Result<Settings, Trouble> {
         ));
     }
     Ok(settings)
+}
+
+/// The observer that the settings describe, with the Earth's rotation read.
+///
+/// # Errors
+/// [`Trouble`] with the line of the Earth-rotation file that cannot be used: exit code 2.
+pub fn observer(settings: &Settings) -> Result<Observer, Trouble> {
+    let rotation = match &settings.earth_rotation {
+        None => EarthRotation::absent(),
+        Some(file) => EarthRotation::from_finals2000a(&file.text).map_err(|error| {
+            Trouble::misuse(format!("{} cannot be used", file.file)).because(&error)
+        })?,
+    };
+    Ok(Observer::new(settings.survey.site.clone(), rotation))
+}
+
+/// Says on standard error where the Earth's rotation is not known well enough to go unmentioned.
+pub fn mention_rotation(quality: RotationQuality) {
+    match quality {
+        RotationQuality::Measured | RotationQuality::Predicted => {}
+        RotationQuality::Held => output::complain(
+            "note: UT1-UTC is held at the last row of the Earth-rotation file; \
+             a newer finals2000A file from the IERS makes times good to 0.1 s",
+        ),
+        RotationQuality::Absent => output::complain(
+            "note: UT1 is taken as UTC (up to 13 arcsec of hour angle); \
+             name an IERS finals2000A file as site.earth_rotation",
+        ),
+    }
 }
 
 /// The texts of the configuration folder.

@@ -16,6 +16,7 @@ mod check;
 mod init;
 pub mod load;
 pub mod output;
+mod sky;
 mod trouble;
 
 use std::path::PathBuf;
@@ -66,12 +67,14 @@ pub struct Global {
 enum Command {
     Check(check::Args),
     Init(init::Args),
+    Sky(sky::Args),
 }
 
 fn dispatch(command: &Command, global: &Global) -> Result<Exit, Trouble> {
     match command {
         Command::Check(args) => check::run(args, global),
         Command::Init(args) => init::run(args, global),
+        Command::Sky(args) => sky::run(args, global),
     }
 }
 

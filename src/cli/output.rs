@@ -10,16 +10,19 @@ use super::Trouble;
 /// # Errors
 /// [`Trouble`] when standard output cannot be written for another reason, as on a full disk.
 pub fn print(text: &str) -> Result<(), Trouble> {
-    let mut out = io::stdout().lock();
-    let written = out
-        .write_all(text.as_bytes())
-        .and_then(|()| {
-            if text.ends_with('\n') {
-                Ok(())
-            } else {
-                out.write_all(b"\n")
-            }
-        })
+    let end: &[u8] = if text.ends_with('\n') { b"" } else { b"\n" };
+    print_pieces([text.as_bytes(), end])
+}
+
+/// Prints pieces one after the other, for what is too long to be held as one text.
+///
+/// # Errors
+/// As [`print`].
+pub fn print_pieces(pieces: impl IntoIterator<Item = impl AsRef<[u8]>>) -> Result<(), Trouble> {
+    let mut out = io::BufWriter::new(io::stdout().lock());
+    let written = pieces
+        .into_iter()
+        .try_for_each(|piece| out.write_all(piece.as_ref()))
         .and_then(|()| out.flush());
     match written {
         Err(error) if error.kind() != io::ErrorKind::BrokenPipe => {

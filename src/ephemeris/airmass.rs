@@ -1,6 +1,6 @@
 //! How much air a star is seen through, relative to the zenith.
 
-use crate::units::Angle;
+use crate::units::{Angle, bracketed_root};
 
 /// A published model of relative airmass.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Default)]
@@ -73,6 +73,24 @@ impl AirmassModel {
     }
 }
 
+/// Lowest altitude of the kind that a model takes at which its airmass does not exceed a limit; the
+/// zenith where the limit is below one.
+pub fn altitude_of_airmass(model: AirmassModel, limit: f64) -> Angle {
+    let excess = |rad: f64| {
+        let airmass = model.airmass(Angle::from_rad(rad));
+        // A large finite number stands for the plane-parallel model's pole at the horizon.
+        airmass.min(1e9) - limit
+    };
+    let zenith = std::f64::consts::FRAC_PI_2;
+    if excess(0.0) <= 0.0 {
+        return Angle::ZERO;
+    }
+    match bracketed_root(excess, 0.0, zenith, 1e-9) {
+        Ok(rad) => Angle::from_rad(rad),
+        Err(_) => Angle::from_rad(zenith),
+    }
+}
+
 /// Young 1994 of the sine of the true altitude, which must not be negative.
 #[inline(always)]
 pub(crate) fn young_1994(sine: f64) -> f64 {
@@ -138,6 +156,18 @@ mod tests {
         check(AirmassModel::Rozenberg1966, 80.0, 0.012);
         check(AirmassModel::KastenYoung1989, 88.0, 0.03);
         check(AirmassModel::Pickering2002, 88.0, 0.03);
+    }
+
+    #[test]
+    fn limit_on_airmass_is_a_limit_on_altitude() {
+        for model in ALL {
+            for limit in [1.2, 2.0, 3.5] {
+                let altitude = altitude_of_airmass(model, limit);
+                assert!((model.airmass(altitude) - limit).abs() < 1e-6, "{model:?}");
+            }
+            assert!(altitude_of_airmass(model, 0.9).deg() > 89.9);
+            assert!(altitude_of_airmass(model, f64::INFINITY) == Angle::ZERO);
+        }
     }
 
     #[test]

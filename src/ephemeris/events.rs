@@ -8,9 +8,10 @@
 
 use super::bodies::EphemerisError;
 use super::earth_rotation::RotationQuality;
-use super::frame::altitude;
+use super::frame::{altitude, azimuth};
 use super::observer::Observer;
 use super::place::{illuminated_fraction, moon_semidiameter};
+use super::site::HorizonProfile;
 use super::star::StarMotion;
 use super::track::{SkyTrack, StarTrack};
 use crate::time::{Night, Span, SpanSet, Utc};
@@ -30,7 +31,7 @@ pub const HORIZON_REFRACTION: Angle = Angle::from_deg(34.0 / 60.0);
 
 /// Samples are this far apart. The altitude of a body turns twice a day, so that two steps never
 /// hold two turning points, which is what the search for crossings asks for.
-pub(crate) const STEP_S: f64 = 900.0;
+const STEP_S: f64 = 900.0;
 /// Crossings are placed to the millisecond.
 const TOLERANCE_S: f64 = 0.0005;
 /// How far outside the night the sky is looked at.
@@ -203,6 +204,30 @@ impl NightSky {
         }
     }
 
+    /// When a star stands at an altitude or above and free of the horizon profile. The profile may
+    /// turn sharply, so that it is followed minute by minute.
+    pub fn star_clear(&self, star: &StarMotion, limit: Angle, horizon: &HorizonProfile) -> SpanSet {
+        const PROFILE_STEP_S: f64 = 60.0;
+        let path = self.track.star(star);
+        let step_s = if horizon.points_deg().is_empty() {
+            STEP_S
+        } else {
+            PROFILE_STEP_S
+        };
+        Course::sampled(self.night.span, step_s, |utc| {
+            let direction = self.star_at(&path, utc);
+            let free_deg = if horizon.points_deg().is_empty() {
+                limit.deg()
+            } else {
+                horizon
+                    .altitude_deg(azimuth(direction).deg())
+                    .max(limit.deg())
+            };
+            altitude(direction).deg() - free_deg
+        })
+        .above()
+    }
+
     /// The star's highest altitude without refraction within a span of the night; `None` for an
     /// empty span.
     pub fn highest(&self, star: &StarMotion, within: Span) -> Option<(Utc, Angle)> {
@@ -288,14 +313,19 @@ pub(crate) struct Course {
 }
 
 impl Course {
+    /// A course whose turning points lie at least two samples of [`STEP_S`] apart.
     pub fn over(span: Span, height: impl Fn(Utc) -> f64) -> Self {
+        Self::sampled(span, STEP_S, height)
+    }
+
+    fn sampled(span: Span, step_s: f64, height: impl Fn(Utc) -> f64) -> Self {
         let at = |seconds: f64| span.start.plus_ms((seconds * 1000.0).round() as i64);
         let found = crossings(
             |seconds| height(at(seconds)),
             Search {
                 from: 0.0,
                 to: span.length_ms() as f64 / 1000.0,
-                step: STEP_S,
+                step: step_s,
                 tolerance: TOLERANCE_S,
             },
         );

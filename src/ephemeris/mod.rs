@@ -25,7 +25,7 @@ mod star;
 mod track;
 mod visibility;
 
-pub use airmass::{AirmassModel, AltitudeKind};
+pub use airmass::{AirmassModel, AltitudeKind, altitude_of_airmass};
 pub use bodies::EphemerisError;
 pub use earth_rotation::{EarthOrientation, EarthRotation, EarthRotationError, RotationQuality};
 pub use events::{
