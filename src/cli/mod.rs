@@ -8,8 +8,8 @@
 //!   `after_help`), and
 //! - `pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble>`.
 //!
-//! Then three short lines here: `mod <command>;`, a variant of [`Command`] and an arm in
-//! [`dispatch`]. A command loads the settings with [`load::settings`], prints through
+//! Then three short lines here: `mod <command>;`, a variant of `Command` and an arm in
+//! `dispatch`. A command loads the settings with [`load::settings`], prints through
 //! [`output::print`], and says what went wrong with a [`Trouble`], which knows its exit code.
 
 mod check;

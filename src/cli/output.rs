@@ -17,7 +17,7 @@ pub fn print(text: &str) -> Result<(), Trouble> {
 /// Prints pieces one after the other, for what is too long to be held as one text.
 ///
 /// # Errors
-/// As [`print`].
+/// As [`print()`].
 pub fn print_pieces(pieces: impl IntoIterator<Item = impl AsRef<[u8]>>) -> Result<(), Trouble> {
     let mut out = io::BufWriter::new(io::stdout().lock());
     let written = pieces
@@ -35,7 +35,7 @@ pub fn print_pieces(pieces: impl IntoIterator<Item = impl AsRef<[u8]>>) -> Resul
 /// Prints a value as JSON to standard output.
 ///
 /// # Errors
-/// As [`print`].
+/// As [`print()`].
 pub fn print_json(value: &serde_json::Value) -> Result<(), Trouble> {
     print(&format!("{value:#}"))
 }

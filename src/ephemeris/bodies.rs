@@ -132,6 +132,46 @@ fn tdb_minus_tt_s(tt: Tt, ground: &Ground) -> f64 {
 mod tests {
     use super::*;
 
+    fn bodies_at(tt_jd: f64) -> Bodies {
+        use crate::ephemeris::{EarthRotation, HorizonProfile, Observer, Site};
+        use crate::units::Angle;
+        let site = Site {
+            name: "test".to_owned(),
+            latitude: Angle::ZERO,
+            longitude: Angle::ZERO,
+            height_m: 0.0,
+            pressure_hpa: 0.0,
+            temperature_c: 0.0,
+            relative_humidity: 0.0,
+            horizon: HorizonProfile::default(),
+        };
+        let ground = Ground::of(&Observer::new(site, EarthRotation::absent()));
+        let date = JulianDate {
+            day: tt_jd,
+            fraction: 0.0,
+        };
+        Bodies::at(Tt(date), &ground)
+    }
+
+    #[test]
+    fn sun_and_moon_of_published_examples() {
+        use crate::units::vector::{dot, norm, sub};
+        // Meeus, Astronomical Algorithms, from memory. Example 25.b: 1992 October 13.0 TD, distance
+        // of the Sun 0.99760853 au by the complete VSOP87.
+        let october = bodies_at(2_448_908.5);
+        assert!((norm(october.sun_au) - 0.997_608_53).abs() < 3e-8);
+        // Examples 47.a and 48.a: 1992 April 12.0 TD, Moon at 368 409.7 km; phase angle 69.0756°
+        // and illuminated fraction 0.6786 from the centre of the Earth. The book puts in light-time
+        // where the geometric place here has none: 0.7″ of the Moon, some 3 km.
+        let april = bodies_at(2_448_724.5);
+        let distance_km = norm(april.moon_au) * 149_597_870.7;
+        assert!((distance_km - 368_409.7).abs() < 3.0, "{distance_km}");
+        let to_sun = sub(april.sun_au, april.moon_au);
+        let cosine = -dot(to_sun, april.moon_au) / (norm(to_sun) * norm(april.moon_au));
+        assert!((cosine.acos().to_degrees() - 69.0756).abs() < 0.002);
+        assert!((0.5 * (1.0 + cosine) - 0.6786).abs() < 1e-4);
+    }
+
     #[test]
     fn range_ends_with_the_ephemeris() {
         let check = |text: &str, inside: bool| {
