@@ -162,13 +162,13 @@ mod tests {
         assert!((norm(october.sun_au) - 0.997_608_53).abs() < 3e-8);
         // Examples 47.a and 48.a: 1992 April 12.0 TD, Moon at 368 409.7 km; phase angle 69.0756°
         // and illuminated fraction 0.6786 from the centre of the Earth. The book puts in light-time
-        // where the geometric place here has none: 0.7″ of the Moon, some 3 km.
+        // where the geometric places here have none: 20″ (0.006°) of the Sun, 0.7″ of the Moon.
         let april = bodies_at(2_448_724.5);
         let distance_km = norm(april.moon_au) * 149_597_870.7;
         assert!((distance_km - 368_409.7).abs() < 3.0, "{distance_km}");
         let to_sun = sub(april.sun_au, april.moon_au);
         let cosine = -dot(to_sun, april.moon_au) / (norm(to_sun) * norm(april.moon_au));
-        assert!((cosine.acos().to_degrees() - 69.0756).abs() < 0.002);
+        assert!((cosine.acos().to_degrees() - 69.0756).abs() < 0.008);
         assert!((0.5 * (1.0 + cosine) - 0.6786).abs() < 1e-4);
     }
 
