@@ -3,10 +3,15 @@
 use serde_json::{Value, json};
 
 use super::{Exit, Global, Trouble, load, output};
-use crate::settings::{self, Faults, Finding, Settings};
+use crate::settings::{self, Faults, Finding, Settings, Severity, doubts};
+use crate::time::Utc;
 
-/// Report everything that is wrong or doubtful in the configuration, with file, line, key and
-/// remedy. Faults end with exit code 2 (3 when a file cannot be read); doubts alone with 0.
+/// Report everything that is wrong, impossible or doubtful in the configuration, with file, line,
+/// key and remedy
+///
+/// Wrong: no settings can be made of it (exit code 2; 3 when a file cannot be read). Impossible: a
+/// star that never rises, a cadence or an exposure that can never be had (exit code 1). Doubtful:
+/// hardly what was meant, but it can be worked with (exit code 0).
 #[derive(Debug, clap::Args)]
 #[command(after_help = "Example:
   nightwright check
@@ -21,14 +26,15 @@ pub struct Args {
 pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
     let sources = load::sources(&global.config)?;
     match settings::check(&sources) {
-        Ok(settings) => sound(args, global, &settings),
+        Ok(settings) => examined(args, global, &settings),
         Err(faults) if args.json => faulty_json(global, &faults),
         Err(faults) => Err(load::trouble_of(&faults)),
     }
 }
 
-fn sound(args: &Args, global: &Global, settings: &Settings) -> Result<Exit, Trouble> {
-    let doubts = &settings.doubts;
+fn examined(args: &Args, global: &Global, settings: &Settings) -> Result<Exit, Trouble> {
+    let now = Utc::from_unix_ms(chrono::Utc::now().timestamp_millis());
+    let findings = doubts::examine(settings, now);
     let survey = &settings.survey;
     let (targets, programmes) = (survey.targets.len(), survey.programmes.len());
     if args.json {
@@ -38,23 +44,28 @@ fn sound(args: &Args, global: &Global, settings: &Settings) -> Result<Exit, Trou
             "survey": survey.name,
             "targets": targets,
             "programmes": programmes,
-            "findings": doubts.iter().map(as_json).collect::<Vec<Value>>(),
+            "findings": findings.iter().map(as_json).collect::<Vec<Value>>(),
         }))?;
-        return Ok(Exit::Fine);
+    } else {
+        let mut lines: Vec<String> = findings.iter().map(load::told).collect();
+        lines.push(format!(
+            "{}: {}, {programmes} programmes, {targets} targets: nothing wrong, {} impossible, {} \
+             doubtful",
+            global.config.display(),
+            survey.name,
+            count(&findings, Severity::Impossible),
+            count(&findings, Severity::Doubtful),
+        ));
+        output::print(&lines.join("\n"))?;
     }
-    let mut lines: Vec<String> = doubts.iter().map(load::told).collect();
-    let doubtful = match doubts.len() {
-        0 => "nothing doubtful".to_owned(),
-        1 => "1 doubt".to_owned(),
-        n => format!("{n} doubts"),
-    };
-    lines.push(format!(
-        "{}: {}, {programmes} programmes, {targets} targets; no fault, {doubtful}",
-        global.config.display(),
-        survey.name
-    ));
-    output::print(&lines.join("\n"))?;
-    Ok(Exit::Fine)
+    Ok(match count(&findings, Severity::Impossible) {
+        0 => Exit::Fine,
+        _ => Exit::No,
+    })
+}
+
+fn count(findings: &[Finding], severity: Severity) -> usize {
+    findings.iter().filter(|f| f.severity == severity).count()
 }
 
 fn faulty_json(global: &Global, faults: &Faults) -> Result<Exit, Trouble> {

@@ -7,7 +7,7 @@ use std::path::Path;
 
 use super::{Exit, Global, Trouble, output};
 use crate::ephemeris::{EarthRotation, Observer, RotationQuality};
-use crate::settings::{self, Faults, Finding, Settings, Sources};
+use crate::settings::{self, Faults, Finding, Settings, Severity, Sources};
 
 /// No file of settings is larger; a device or a core dump in its place is not read to its end.
 const LARGEST_FILE: u64 = 64 * 1024 * 1024;
@@ -135,14 +135,18 @@ pub fn trouble_of(faults: &Faults) -> Trouble {
     } else {
         Exit::Misuse
     };
-    Trouble::from_error(exit, faults).details(faults.findings.iter().map(told).collect())
+    let mut findings: Vec<&Finding> = faults.findings.iter().collect();
+    // What must be mended stands last, next to the message, where a terminal leaves off.
+    findings.sort_by_key(|f| f.severity != Severity::Doubtful);
+    Trouble::from_error(exit, faults).details(findings.into_iter().map(told).collect())
 }
 
 /// A finding as lines for people.
 pub fn told(finding: &Finding) -> String {
     let mark = match finding.severity {
-        settings::Severity::Doubtful => "doubt: ",
-        _ => "",
+        Severity::Doubtful => "doubtful: ",
+        Severity::Impossible => "impossible: ",
+        Severity::Unreadable | Severity::Wrong => "",
     };
     match &finding.hint {
         Some(hint) => format!("{mark}{finding}\n  hint: {hint}"),

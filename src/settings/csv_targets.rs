@@ -107,7 +107,7 @@ pub(super) fn read(file: &str, text: &str, sink: &Sink) -> Vec<Node> {
                 break;
             }
         };
-        let line = record.position().map_or(1, |p| p.line() as usize);
+        let line = record.position().map_or(1, |p| line_of(text, p.byte()));
         match &columns {
             None => columns = Some(header(file, line, &record, sink)),
             Some(columns) if record.len() == columns.len() => {
@@ -126,6 +126,24 @@ pub(super) fn read(file: &str, text: &str, sink: &Sink) -> Vec<Node> {
         sink.wrong(&Place::file(file), "", message, None);
     }
     rows
+}
+
+/// The line on which a record begins. The reader's own count lags behind where lines end in CRLF,
+/// and its position lies before the blank and comment lines that it has skipped.
+fn line_of(text: &str, position: u64) -> usize {
+    let bytes = text.as_bytes();
+    let mut at = usize::try_from(position).unwrap_or(0).min(bytes.len());
+    while let Some(byte) = bytes.get(at) {
+        match byte {
+            b'\r' | b'\n' => at += 1,
+            b'#' => {
+                let rest = &bytes[at..];
+                at += rest.iter().position(|b| *b == b'\n').unwrap_or(rest.len());
+            }
+            _ => break,
+        }
+    }
+    1 + bytes[..at].iter().filter(|b| **b == b'\n').count()
 }
 
 fn place(file: &str, line: usize, column: Option<usize>) -> Place {

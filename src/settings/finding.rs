@@ -26,6 +26,10 @@ impl Place {
             column: None,
         }
     }
+
+    fn is_csv(&self) -> bool {
+        self.file.ends_with(".csv")
+    }
 }
 
 impl fmt::Display for Place {
@@ -44,6 +48,8 @@ pub enum Severity {
     Unreadable,
     /// Wrong: no settings can be made of it.
     Wrong,
+    /// Sound as a text, but what it asks for can never be had: the answer of a check is no.
+    Impossible,
     /// It can be worked with, but it is probably not what was meant.
     Doubtful,
 }
@@ -54,6 +60,7 @@ impl Severity {
         match self {
             Severity::Unreadable => "unreadable",
             Severity::Wrong => "wrong",
+            Severity::Impossible => "impossible",
             Severity::Doubtful => "doubtful",
         }
     }
@@ -78,7 +85,12 @@ impl fmt::Display for Finding {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         write!(f, "{}: ", self.place)?;
         if !self.key.is_empty() {
-            write!(f, "{}: ", self.key)?;
+            f.write_str(&self.key)?;
+            // A line of CSV is hard to count along; in TOML the key says enough.
+            if let Some(column) = self.place.column.filter(|_| self.place.is_csv()) {
+                write!(f, " (column {column})")?;
+            }
+            f.write_str(": ")?;
         }
         f.write_str(&self.message)
     }

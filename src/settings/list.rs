@@ -8,7 +8,7 @@ use super::section::Section;
 use super::survey::SurveyPart;
 use super::target::{self, Assumed};
 use super::{SURVEY_FILE, Sources, TARGETS_CSV, TARGETS_TOML};
-use crate::catalogue::{Programme, Survey, Target};
+use crate::catalogue::{Programme, Survey, Target, TargetId};
 
 /// A target with what its reader must still be told about.
 struct Read {
@@ -199,23 +199,24 @@ pub(super) fn drop_calibrations_without_star(survey: &mut Survey, file: &str, si
         }
         let key = format!("instrument.calibration.{}.standards", calibration.id);
         let place = sink.place_of(&key).unwrap_or_else(|| Place::file(file));
-        calibration.standards.retain(|standard| {
-            let listed = targets.iter().any(|t| t.id == *standard);
-            if !listed {
-                let message = format!("the standard {standard} is not on the target list");
-                let hint = "add it to the targets, or remove it here".to_owned();
-                sink.doubt(&place, &key, message, Some(hint));
-            }
-            listed
-        });
-        let kept = !calibration.standards.is_empty();
-        if !kept {
+        let (kept, missing): (Vec<TargetId>, Vec<TargetId>) = calibration
+            .standards
+            .drain(..)
+            .partition(|standard| targets.iter().any(|t| t.id == *standard));
+        calibration.standards = kept;
+        let hint = Some("add them to the targets, or remove them here".to_owned());
+        let names: Vec<&str> = missing.iter().map(TargetId::as_str).collect();
+        let names = names.join(", ");
+        if calibration.standards.is_empty() {
             let message = format!(
-                "none of its standards is on the list: {} is left out of every night",
+                "none of {names} is on the target list: {} is left out of every night",
                 calibration.id
             );
-            sink.doubt(&place, &key, message, None);
+            sink.doubt(&place, &key, message, hint);
+        } else if !names.is_empty() {
+            let message = format!("not on the target list: {names}");
+            sink.doubt(&place, &key, message, hint);
         }
-        kept
+        !calibration.standards.is_empty()
     });
 }

@@ -2,7 +2,8 @@
 //!
 //! [`check`] takes texts, not files: reading the folder is the command line's work. It gives either
 //! [`Settings`] or every fault of every file with file, line, key, what was found and what would do.
-//! What is doubtful but can be worked with travels along in [`Settings::doubts`].
+//! What is doubtful but can be worked with travels along in [`Settings::doubts`]; what astronomy
+//! says of the survey is told by [`doubts::examine`].
 //!
 //!
 //! | file | holds |
@@ -16,6 +17,7 @@
 mod csv_targets;
 mod daemon;
 pub mod defaults;
+pub mod doubts;
 mod equipment;
 mod feed;
 mod finding;
@@ -28,7 +30,10 @@ mod spectral;
 mod suggest;
 mod survey;
 mod target;
+#[cfg(test)]
+mod tests;
 mod weather;
+mod year;
 
 use std::collections::BTreeMap;
 
