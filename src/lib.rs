@@ -19,6 +19,7 @@
 #![forbid(unsafe_code)]
 #![deny(missing_docs)]
 
+pub mod audit;
 pub mod catalogue;
 pub mod cli;
 pub mod ephemeris;

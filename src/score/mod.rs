@@ -25,4 +25,4 @@ pub use weights::{SHARE_BOUNDS, season_factor, share_factors};
 pub use window::{EDGE_SIGMAS, WindowVerdict, judge};
 
 #[cfg(test)]
-mod fixtures;
+pub(crate) mod fixtures;
