@@ -67,7 +67,9 @@ impl Folder {
 
     fn check(&self) -> Answer {
         let before = contents(&self.path);
-        let answer = nightwright(&["check", "--config", self.path.to_str().unwrap()]);
+        // As of a fixed night: ephemerides and Earth rotation age with the calendar.
+        let folder = self.path.to_str().unwrap();
+        let answer = nightwright(&["check", "--night", "2026-12-01", "--config", folder]);
         assert_eq!(before, contents(&self.path), "check changes nothing");
         assert!(!answer.err.contains("panicked"), "{}", answer.err);
         answer
@@ -429,6 +431,25 @@ fn missing_files_and_folders_are_named() {
 }
 
 #[test]
+fn earth_rotation_is_read_as_well() {
+    let folder = Folder::new();
+    fs::write(folder.file("finals2000A.txt"), "no such thing\n").unwrap();
+    folder.refused(2, &["finals2000A.txt: line 1: "]);
+    let folder = Folder::new();
+    let answer = nightwright(&[
+        "check",
+        "--night",
+        "2029-01-01",
+        "--config",
+        folder.path.to_str().unwrap(),
+    ]);
+    assert_eq!(answer.code, 0, "{}", answer.err);
+    let doubt = "site.earth_rotation: ";
+    assert!(answer.out.contains(doubt), "{}", answer.out);
+    assert!(answer.out.contains("not to 2029-01-01"), "{}", answer.out);
+}
+
+#[test]
 fn what_cannot_be_read_is_the_machines_fault() {
     // A folder in the place of a file: unreadable for every user, root included.
     let folder = Folder::new();
@@ -574,6 +595,7 @@ fn what_was_hardly_meant_is_doubted() {
             "telescope.min_sun_separation_deg: found 140",
             "programme: the shares add up to 1.50",
             "target.A.candidate[1].period_error_d (column 11): by ",
+            "by 2026-12-01 the ephemeris",
             "the phase is lost",
             "the same star twice?",
             "no parallax_mas: taken as zero",

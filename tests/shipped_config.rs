@@ -72,3 +72,51 @@ fn most_visits_take_ten_to_thirty_minutes() {
         .count();
     assert!(within * 10 >= minutes.len() * 8, "{minutes:.0?}");
 }
+
+/// The words in quotes in a source text that look like a key: lower case with an underscore.
+fn keys_of(source: &str) -> Vec<&str> {
+    let code = source.split("#[cfg(test)]").next().unwrap_or(source);
+    let is_key = |word: &&str| {
+        let sound = |c: char| c.is_ascii_lowercase() || c.is_ascii_digit() || c == '_';
+        word.contains('_') && word.chars().all(sound)
+    };
+    code.split('"').skip(1).step_by(2).filter(is_key).collect()
+}
+
+#[test]
+fn every_key_is_explained_in_the_files_and_in_the_readme() {
+    let root = concat!(env!("CARGO_MANIFEST_DIR"));
+    let read = |name: String| std::fs::read_to_string(format!("{root}/{name}")).unwrap();
+    let readme = read("README.md".to_owned());
+    let files: String = settings::FILES
+        .iter()
+        .filter(|name| **name != settings::TARGETS_CSV)
+        .map(|name| read(format!("config/{name}")))
+        .collect();
+    let mut count = 0;
+    for part in [
+        "site",
+        "equipment",
+        "survey",
+        "target",
+        "weather",
+        "daemon",
+        "feed",
+    ] {
+        let source = read(format!("src/settings/{part}.rs"));
+        for key in keys_of(&source) {
+            count += 1;
+            assert!(files.contains(key), "{key} of {part}.rs is not in config/");
+            // What a feed can map is listed in night.toml alone, with the units.
+            let listed_there = ["sky_temperature", "air_temperature", "wind_from"].contains(&key);
+            assert!(
+                readme.contains(key) || listed_there,
+                "{key} of {part}.rs is not in README.md"
+            );
+        }
+    }
+    assert!(
+        count > 150,
+        "{count} keys found: are they still written so?"
+    );
+}

@@ -4,7 +4,7 @@ use serde_json::{Value, json};
 
 use super::{Exit, Global, Trouble, load, output};
 use crate::settings::{self, Faults, Finding, Settings, Severity, doubts};
-use crate::time::Utc;
+use crate::time::{NightDate, Utc};
 
 /// Report everything that is wrong, impossible or doubtful in the configuration, with file, line,
 /// key and remedy
@@ -17,6 +17,9 @@ use crate::time::Utc;
   nightwright check
   nightwright check --config my-survey --json")]
 pub struct Args {
+    /// Look at the survey as of this night, YYYY-MM-DD [default: tonight]
+    #[arg(long, value_name = "DATE", value_parser = NightDate::parse)]
+    night: Option<NightDate>,
     /// Print JSON
     #[arg(long)]
     json: bool,
@@ -33,8 +36,11 @@ pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
 }
 
 fn examined(args: &Args, global: &Global, settings: &Settings) -> Result<Exit, Trouble> {
-    let now = Utc::from_unix_ms(chrono::Utc::now().timestamp_millis());
-    let findings = doubts::examine(settings, now);
+    let night = args.night.unwrap_or_else(|| {
+        let now = Utc::from_unix_ms(chrono::Utc::now().timestamp_millis());
+        NightDate::at(now, settings.survey.site.longitude)
+    });
+    let findings = doubts::examine(settings, night);
     let survey = &settings.survey;
     let (targets, programmes) = (survey.targets.len(), survey.programmes.len());
     if args.json {

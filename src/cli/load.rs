@@ -6,7 +6,7 @@ use std::io::{self, Read};
 use std::path::Path;
 
 use super::{Exit, Global, Trouble, output};
-use crate::ephemeris::{EarthRotation, Observer, RotationQuality};
+use crate::ephemeris::RotationQuality;
 use crate::settings::{self, Faults, Finding, Settings, Severity, Sources};
 
 /// No file of settings is larger; a device or a core dump in its place is not read to its end.
@@ -28,20 +28,6 @@ pub fn settings(global: &Global) -> Result<Settings, Trouble> {
         ));
     }
     Ok(settings)
-}
-
-/// The observer that the settings describe, with the Earth's rotation read.
-///
-/// # Errors
-/// [`Trouble`] with the line of the Earth-rotation file that cannot be used: exit code 2.
-pub fn observer(settings: &Settings) -> Result<Observer, Trouble> {
-    let rotation = match &settings.earth_rotation {
-        None => EarthRotation::absent(),
-        Some(file) => EarthRotation::from_finals2000a(&file.text).map_err(|error| {
-            Trouble::misuse(format!("{} cannot be used", file.file)).because(&error)
-        })?,
-    };
-    Ok(Observer::new(settings.survey.site.clone(), rotation))
 }
 
 /// Says on standard error where the Earth's rotation is not known well enough to go unmentioned.

@@ -7,7 +7,7 @@ use super::finding::{Finding, Severity};
 use super::year::{self, Chance, Year};
 use crate::catalogue::{Calibration, Target};
 use crate::score::{CannotExpose, Phase, Photometer};
-use crate::time::{Night, NightDate, Utc};
+use crate::time::{Night, NightDate};
 use crate::units::Angle;
 
 /// Two entries closer than this are taken for the same star: a fibre holds both.
@@ -26,32 +26,30 @@ const NARROW_MOON_DEG: f64 = 5.0;
 /// A larger distance from the sun shuts out stars that stand high at dusk.
 const WIDE_SUN_DEG: f64 = 100.0;
 
-/// Everything that is impossible or doubtful in the survey, as of an instant; the doubts that the
-/// texts themselves raised come first.
-pub fn examine(settings: &Settings, now: Utc) -> Vec<Finding> {
+/// Everything that is impossible or doubtful in the survey as of a night, the doubts that the texts
+/// themselves raised among them: the impossible first, then in the order of files and lines.
+pub fn examine(settings: &Settings, tonight: NightDate) -> Vec<Finding> {
     let survey = &settings.survey;
-    let tonight = NightDate::at(now, survey.site.longitude);
     let first = survey.first_night.map_or(tonight, |n| n.max(tonight));
-    let year = Year::new(
-        &survey.site,
-        &survey.telescope,
-        survey.planning.darkness_sun_altitude,
-        first,
-    );
     let mut examiner = Examiner {
         settings,
-        year,
         first,
         findings: settings.doubts.clone(),
     };
     examiner.longitude();
+    examiner.earth_rotation();
     examiner.separations();
-    let places: Vec<(Angle, Angle)> = survey.targets.iter().map(|t| moved(t, first)).collect();
-    for (target, place) in survey.targets.iter().zip(&places) {
-        examiner.target(target, *place);
+    let observer = settings.observer();
+    let darkness = survey.planning.darkness_sun_altitude;
+    match Year::new(&observer, &survey.telescope, darkness, first) {
+        Ok(year) => examiner.targets(&year),
+        Err(error) => examiner.find(
+            Severity::Impossible,
+            "survey.first_night".to_owned(),
+            format!("the sky of {first} cannot be computed: {error}"),
+            "move the survey into the years that can be computed",
+        ),
     }
-    examiner.calibrations(&places);
-    examiner.twins(&places);
     examiner
         .findings
         .sort_by(|a, b| a.severity.cmp(&b.severity).then(a.place.cmp(&b.place)));
@@ -60,10 +58,16 @@ pub fn examine(settings: &Settings, now: Utc) -> Vec<Finding> {
 
 struct Examiner<'a> {
     settings: &'a Settings,
-    year: Year<'a>,
     /// Tonight, or the survey's first night when that is later.
     first: NightDate,
     findings: Vec<Finding>,
+}
+
+/// A star's chances through the year, for a visit of some length.
+struct Sampled<'a> {
+    chances: Vec<Chance>,
+    year: &'a Year<'a>,
+    duration_min: f64,
 }
 
 impl Examiner<'_> {
@@ -75,6 +79,40 @@ impl Examiner<'_> {
             message,
             hint: Some(hint.to_owned()),
         });
+    }
+
+    fn targets(&mut self, year: &Year<'_>) {
+        let targets = &self.settings.survey.targets;
+        let places: Vec<(Angle, Angle)> = targets.iter().map(|t| moved(t, self.first)).collect();
+        for (target, place) in targets.iter().zip(&places) {
+            self.ephemerides(target);
+            self.target(target, *place, year);
+        }
+        self.calibrations(&places, year);
+        self.twins(&places);
+    }
+
+    fn earth_rotation(&mut self) {
+        let Some(file) = &self.settings.earth_rotation else {
+            return;
+        };
+        let Some(known) = file.rotation.known_span() else {
+            return;
+        };
+        let night = Night::of(self.first, self.settings.survey.site.longitude).span;
+        if night.end <= known.end && known.start <= night.start {
+            return;
+        }
+        let (from, to) = (known.start, known.end);
+        self.find(
+            Severity::Doubtful,
+            "site.earth_rotation".to_owned(),
+            format!(
+                "{} reaches from {from} to {to}, not to {}",
+                file.file, self.first
+            ),
+            "fetch a newer finals2000A file from the IERS",
+        );
     }
 
     fn longitude(&mut self) {
@@ -150,8 +188,7 @@ impl Examiner<'_> {
         );
     }
 
-    fn target(&mut self, target: &Target, place: (Angle, Angle)) {
-        self.ephemerides(target);
+    fn target(&mut self, target: &Target, place: (Angle, Angle), year: &Year<'_>) {
         let path = format!("target.{}", target.id);
         if let Some(highest) = self.never_rises(target, place) {
             let limit = year::lowest_altitude_deg(&self.settings.survey.telescope, target);
@@ -175,12 +212,22 @@ impl Examiner<'_> {
                 return;
             }
         };
-        let chances = self.year.chances(target, place);
-        self.duration(target, &path, &chances, duration_min);
+        let sampled = Sampled {
+            chances: year.chances(target, place),
+            year,
+            duration_min,
+        };
+        self.duration(target, &path, &sampled);
     }
 
     /// Whether a visit, a night's visits and the total fit into the darkness that the star gets.
-    fn duration(&mut self, target: &Target, path: &str, chances: &[Chance], duration_min: f64) {
+    fn duration(&mut self, target: &Target, path: &str, sampled: &Sampled<'_>) {
+        let Sampled {
+            chances,
+            year,
+            duration_min,
+        } = sampled;
+        let duration_min = *duration_min;
         let longest = chances.iter().map(|c| c.longest_min).fold(0.0, f64::max);
         if longest == 0.0 {
             let message = "is never within its limits in darkness, all year".to_owned();
@@ -195,7 +242,7 @@ impl Examiner<'_> {
                  longest darkness is {})",
                 minutes(duration_min),
                 minutes(longest),
-                minutes(self.year.longest_dark_min())
+                minutes(year.longest_dark_min())
             );
             let hint = "ask for less signal, or remove the star";
             self.find(Severity::Impossible, key, message, hint);
@@ -218,19 +265,30 @@ impl Examiner<'_> {
             self.find(Severity::Impossible, key, message, hint);
             return;
         }
-        self.total(target, path, chances, duration_min);
+        self.total(target, path, sampled);
     }
 
     /// Whether the total fits between the first and the last night.
-    fn total(&mut self, target: &Target, path: &str, chances: &[Chance], duration_min: f64) {
+    fn total(&mut self, target: &Target, path: &str, sampled: &Sampled<'_>) {
         let cadence = &target.cadence;
+        // From the survey's beginning, not from tonight: visits already made count for the total.
+        let survey_begins = self.settings.survey.first_night.unwrap_or(self.first);
         let begin = cadence
             .first_night
-            .map_or(self.first, |n| n.max(self.first));
+            .map_or(survey_begins, |n| n.max(survey_begins));
         let Some(end) = cadence.last_night else {
             return;
         };
-        let nights = self.usable_nights(chances, begin, end, duration_min);
+        if end < self.first {
+            self.find(
+                Severity::Doubtful,
+                format!("{path}.last_night"),
+                format!("its last night, {end}, is over: it will get no further visit"),
+                "move its last night, or remove the target",
+            );
+            return;
+        }
+        let nights = self.usable_nights(sampled, begin, end);
         if nights == 0 {
             self.find(
                 Severity::Impossible,
@@ -258,13 +316,7 @@ impl Examiner<'_> {
     }
 
     /// Nights of ours from `begin` to `end` in which a visit fits, to the sampling of the year.
-    fn usable_nights(
-        &self,
-        chances: &[Chance],
-        begin: NightDate,
-        end: NightDate,
-        duration_min: f64,
-    ) -> usize {
+    fn usable_nights(&self, sampled: &Sampled<'_>, begin: NightDate, end: NightDate) -> usize {
         // A survey does not last longer; a last night in the year 2200 must not take an age.
         const MOST_NIGHTS: i64 = 40 * 366;
         let last = end.nights_since(begin).min(MOST_NIGHTS);
@@ -272,8 +324,8 @@ impl Examiner<'_> {
             .map(|n| begin.plus_nights(n))
             .filter(|night| self.settings.survey.allocation.is_ours(*night))
             .filter(|night| {
-                let chance = chances.get(self.year.index_of(*night));
-                chance.is_some_and(|c| c.longest_min >= duration_min)
+                let chance = sampled.chances.get(sampled.year.index_of(*night));
+                chance.is_some_and(|c| c.longest_min >= sampled.duration_min)
             })
             .count()
     }
@@ -316,13 +368,13 @@ impl Examiner<'_> {
         }
     }
 
-    fn calibrations(&mut self, places: &[(Angle, Angle)]) {
+    fn calibrations(&mut self, places: &[(Angle, Angle)], year: &Year<'_>) {
         let survey = &self.settings.survey;
         let never_up: Vec<String> = survey
             .instrument
             .calibrations
             .iter()
-            .filter(|c| !c.standards.is_empty() && !self.any_standard_up(c, places))
+            .filter(|c| !c.standards.is_empty() && !self.any_standard_up(c, places, year))
             .map(|c| c.id.clone())
             .collect();
         for id in never_up {
@@ -335,12 +387,17 @@ impl Examiner<'_> {
         }
     }
 
-    fn any_standard_up(&self, calibration: &Calibration, places: &[(Angle, Angle)]) -> bool {
+    fn any_standard_up(
+        &self,
+        calibration: &Calibration,
+        places: &[(Angle, Angle)],
+        year: &Year<'_>,
+    ) -> bool {
         let targets = self.settings.survey.targets.iter().zip(places);
         targets
             .filter(|(target, _)| calibration.standards.contains(&target.id))
             .any(|(target, place)| {
-                let chances = self.year.chances(target, *place);
+                let chances = year.chances(target, *place);
                 chances.iter().any(|c| c.longest_min > 0.0)
             })
     }

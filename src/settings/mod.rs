@@ -48,6 +48,7 @@ use node::{Node, Value};
 use section::Section;
 
 use crate::catalogue::Survey;
+use crate::ephemeris::{EarthRotation, Observer};
 use crate::weather::{Climate, WeatherRules};
 
 /// File of the site.
@@ -85,12 +86,14 @@ pub struct Sources {
 }
 
 /// Earth-rotation data as it was found.
-#[derive(Clone, Debug, PartialEq, Eq)]
+#[derive(Clone, Debug, PartialEq)]
 pub struct EarthRotationFile {
     /// The file, for messages.
     pub file: String,
     /// Its text, in the IERS finals2000A form.
     pub text: String,
+    /// What it says.
+    pub rotation: EarthRotation,
 }
 
 /// The configuration folder, checked.
@@ -112,6 +115,15 @@ pub struct Settings {
     pub doubts: Vec<Finding>,
     /// Where each key stands.
     pub places: Places,
+}
+
+impl Settings {
+    /// The observer at the site, with the Earth's rotation as far as it is known.
+    pub fn observer(&self) -> Observer {
+        let file = self.earth_rotation.as_ref();
+        let rotation = file.map_or_else(EarthRotation::absent, |f| f.rotation.clone());
+        Observer::new(self.survey.site.clone(), rotation)
+    }
 }
 
 impl Sources {
@@ -278,5 +290,15 @@ fn earth_rotation(
         return None;
     }
     let text = sources.text(name, sink)?.to_owned();
-    Some(EarthRotationFile { file: shown, text })
+    match EarthRotation::from_finals2000a(&text) {
+        Ok(rotation) => Some(EarthRotationFile {
+            file: shown,
+            text,
+            rotation,
+        }),
+        Err(error) => {
+            sink.wrong(&Place::file(&shown), "", error.to_string(), None);
+            None
+        }
+    }
 }

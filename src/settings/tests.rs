@@ -3,7 +3,7 @@
 use proptest::prelude::*;
 
 use super::*;
-use crate::time::Utc;
+use crate::time::NightDate;
 
 const SHIPPED: [(&str, &str); 6] = [
     (SITE_FILE, include_str!("../../config/site.toml")),
@@ -47,8 +47,7 @@ fn answer(sources: &Sources) -> Result<(), TestCaseError> {
     files_named_within(sources);
     match check(sources) {
         Ok(settings) => {
-            let now = Utc::parse("2026-12-01T12:00:00Z").unwrap();
-            doubts::examine(&settings, now);
+            doubts::examine(&settings, NightDate::parse("2026-12-01").unwrap());
         }
         Err(faults) => {
             let any = faults

@@ -1,12 +1,12 @@
-//! A year of nights at a site by simple geometry: who is up in the dark, and for how long.
+//! A year of nights at a site: who is up in the dark, within all limits, and for how long.
 //!
-//! A year of 300 stars must take a moment and a question like "does it ever rise?" needs no more than
-//! a tenth of a degree, so that neither precession nor refraction nor the equation of the equinoxes
-//! is looked at. What decides a real night is computed with the full routines elsewhere.
+//! Darkness is the real one. A star's altitude is simple geometry (no precession, no refraction): a
+//! year of 300 stars must take a moment, and a question like "does it ever rise?" needs no more than
+//! a tenth of a degree. What decides a real night is computed with the full routines elsewhere.
 
 use crate::catalogue::{Mount, Target, Telescope};
-use crate::ephemeris::Site;
-use crate::time::{DAY_MS, MINUTE_MS, Night, NightDate, Utc};
+use crate::ephemeris::{AirmassModel, EphemerisError, Observer, Visibility, altitude_of_airmass};
+use crate::time::{MINUTE_MS, NightDate, Span, Utc};
 use crate::units::Angle;
 
 /// Every so many nights one is looked at.
@@ -14,14 +14,14 @@ const NIGHT_STEP: usize = 5;
 /// Length of the year that repeats, in nights: a multiple of the step.
 const YEAR_NIGHTS: usize = 365;
 /// Grid within a night, minutes.
-const STEP_MIN: usize = 10;
+const STEP_MIN: i64 = 10;
 
 /// Julian date of J2000.0.
 const J2000_JD: f64 = 2_451_545.0;
 
 /// The sampled nights of a year.
 pub(super) struct Year<'a> {
-    site: &'a Site,
+    observer: &'a Observer,
     telescope: &'a Telescope,
     first: NightDate,
     /// Per night looked at, the local sidereal time of each dark grid point, radians.
@@ -39,7 +39,7 @@ pub(super) struct Chance {
 
 /// The conditions that a star must meet.
 struct Limits<'a> {
-    site: &'a Site,
+    observer: &'a Observer,
     telescope: &'a Telescope,
     low_deg: f64,
     dec: Angle,
@@ -49,33 +49,37 @@ struct Limits<'a> {
 impl<'a> Year<'a> {
     /// The year from that night on; darkness is the sun's centre below the altitude.
     pub(super) fn new(
-        site: &'a Site,
+        observer: &'a Observer,
         telescope: &'a Telescope,
         darkness_sun_altitude: Angle,
         first: NightDate,
-    ) -> Self {
-        let dark = (0..YEAR_NIGHTS)
+    ) -> Result<Self, EphemerisError> {
+        let nights = Visibility::over(observer, first, YEAR_NIGHTS, darkness_sun_altitude)?;
+        let dark = nights
+            .darkness()
             .step_by(NIGHT_STEP)
-            .map(|n| dark_sidereal_times(site, darkness_sun_altitude, first.plus_nights(n as i64)))
+            .map(|(_, darkness)| {
+                darkness.map_or_else(Vec::new, |d| sidereal_times(d, observer.site.longitude))
+            })
             .collect();
-        Year {
-            site,
+        Ok(Year {
+            observer,
             telescope,
             first,
             dark,
-        }
+        })
     }
 
     /// The longest darkness of the year in minutes.
     pub(super) fn longest_dark_min(&self) -> f64 {
         let longest = self.dark.iter().map(Vec::len).max().unwrap_or(0);
-        (longest * STEP_MIN) as f64
+        minutes(longest)
     }
 
     /// A star's chance in each night looked at.
     pub(super) fn chances(&self, target: &Target, place: (Angle, Angle)) -> Vec<Chance> {
         let limits = Limits {
-            site: self.site,
+            observer: self.observer,
             telescope: self.telescope,
             low_deg: lowest_altitude_deg(self.telescope, target),
             ra: place.0,
@@ -105,15 +109,16 @@ impl Limits<'_> {
             }
             run += 1;
             let begun = *first.get_or_insert(index);
-            chance.longest_min = chance.longest_min.max((run * STEP_MIN) as f64);
-            chance.span_min = ((index + 1 - begun) * STEP_MIN) as f64;
+            chance.longest_min = chance.longest_min.max(minutes(run));
+            chance.span_min = minutes(index + 1 - begun);
         }
         chance
     }
 
     fn is_free(&self, sidereal_rad: f64) -> bool {
         let hour_angle = Angle::from_rad(sidereal_rad - self.ra.rad()).wrapped_signed();
-        let (sin_lat, cos_lat) = self.site.latitude.rad().sin_cos();
+        let site = &self.observer.site;
+        let (sin_lat, cos_lat) = site.latitude.rad().sin_cos();
         let (sin_dec, cos_dec) = self.dec.rad().sin_cos();
         let (sin_ha, cos_ha) = hour_angle.rad().sin_cos();
         let up = sin_lat * sin_dec + cos_lat * cos_dec * cos_ha;
@@ -132,34 +137,28 @@ impl Limits<'_> {
         let north = cos_lat * sin_dec - sin_lat * cos_dec * cos_ha;
         let east = -cos_dec * sin_ha;
         let azimuth_deg = east.atan2(north).to_degrees();
-        mount_allows && altitude_deg >= self.site.horizon.altitude_deg(azimuth_deg)
+        mount_allows && altitude_deg >= site.horizon.altitude_deg(azimuth_deg)
     }
 }
 
 /// The lowest altitude allowed to a target by telescope and own limits, degrees.
 pub(super) fn lowest_altitude_deg(telescope: &Telescope, target: &Target) -> f64 {
     let own = target.limits.min_altitude.map_or(0.0, Angle::deg);
-    // Plane-parallel air; the difference to better models is below 0.3 degrees down to airmass 5.
-    let by_airmass = target
-        .limits
-        .max_airmass
-        .map_or(0.0, |airmass| (1.0 / airmass).asin().to_degrees());
+    let by_airmass = target.limits.max_airmass.map_or(0.0, |airmass| {
+        altitude_of_airmass(AirmassModel::default(), airmass).deg()
+    });
     telescope.min_altitude.deg().max(own).max(by_airmass)
 }
 
-/// Local mean sidereal time at the dark grid points of a night, radians.
-fn dark_sidereal_times(site: &Site, sun_altitude: Angle, date: NightDate) -> Vec<f64> {
-    let night = Night::of(date, site.longitude);
-    let steps = DAY_MS / (STEP_MIN as i64 * MINUTE_MS);
-    (0..steps)
-        .map(|n| night.span.start.plus_ms(n * STEP_MIN as i64 * MINUTE_MS))
-        .filter_map(|at| {
-            let sidereal = sidereal_rad(at, site.longitude);
-            let (ra, dec) = sun(at);
-            let (sin_lat, cos_lat) = site.latitude.rad().sin_cos();
-            let up = sin_lat * dec.sin() + cos_lat * dec.cos() * (sidereal - ra).cos();
-            (up < sun_altitude.rad().sin()).then_some(sidereal)
-        })
+fn minutes(steps: usize) -> f64 {
+    steps as f64 * STEP_MIN as f64
+}
+
+/// Local mean sidereal time at the grid points of a span, radians.
+fn sidereal_times(span: Span, longitude: Angle) -> Vec<f64> {
+    let step_ms = STEP_MIN * MINUTE_MS;
+    (0..span.length_ms() / step_ms)
+        .map(|n| sidereal_rad(span.start.plus_ms(n * step_ms), longitude))
         .collect()
 }
 
@@ -175,31 +174,16 @@ fn sidereal_rad(at: Utc, longitude: Angle) -> f64 {
     (gmst_deg.rem_euclid(360.0) + longitude.deg()).to_radians()
 }
 
-/// Right ascension and declination of the sun in radians, to 0.01 degrees (Astronomical Almanac,
-/// section C: low-precision formulas for the sun).
-fn sun(at: Utc) -> (f64, f64) {
-    let days = days_since_j2000(at);
-    let mean_longitude = 280.460 + 0.985_647_4 * days;
-    let anomaly = (357.528 + 0.985_600_3 * days).to_radians();
-    let longitude = mean_longitude + 1.915 * anomaly.sin() + 0.020 * (2.0 * anomaly).sin();
-    let longitude = longitude.rem_euclid(360.0).to_radians();
-    let obliquity = (23.439 - 0.000_000_4 * days).to_radians();
-    let ra = (obliquity.cos() * longitude.sin()).atan2(longitude.cos());
-    (ra, (obliquity.sin() * longitude.sin()).asin())
-}
-
 #[cfg(test)]
 mod tests {
     use super::*;
 
     #[test]
-    fn sun_stands_where_the_almanac_has_it() {
-        // Public almanac data from memory: March equinox 2026-03-20 14:46 UT, June solstice
-        // 2026-06-21 08:25 UT. The formula is good to 0.01 degrees.
-        let (ra, dec) = sun(Utc::parse("2026-03-20T14:46:00Z").unwrap());
-        assert!(dec.to_degrees().abs() < 0.01, "{dec}");
-        assert!(ra.to_degrees().abs() < 0.02, "{ra}");
-        let (_, dec) = sun(Utc::parse("2026-06-21T08:25:00Z").unwrap());
-        assert!((dec.to_degrees() - 23.436).abs() < 0.01, "{dec}");
+    fn sidereal_time_is_that_of_the_worked_example() {
+        // Meeus, Astronomical Algorithms, example 12.b: 1987 April 10, 19h21m00s UT, mean sidereal
+        // time at Greenwich 128.7378734 degrees. UT1 - UTC, below a second here, is 0.004 degrees.
+        let at = Utc::parse("1987-04-10T19:21:00Z").unwrap();
+        let deg = sidereal_rad(at, Angle::ZERO).to_degrees();
+        assert!((deg - 128.737_873_4).abs() < 1e-4, "{deg}");
     }
 }

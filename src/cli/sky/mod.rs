@@ -57,7 +57,7 @@ pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
         .transpose()
         .map_err(|error| Trouble::from_error(Exit::Misuse, &error))?;
     let settings = load::settings(global)?;
-    let observer = load::observer(&settings)?;
+    let observer = settings.observer();
     let targets = chosen(&settings, &args.target)?;
     match instants {
         Some(instants) => rows::print(&observer, &targets, &instants, args.json)?,
