@@ -29,6 +29,7 @@ pub mod ports;
 pub mod record;
 pub mod score;
 pub mod settings;
+pub mod sim;
 pub mod time;
 pub mod units;
 pub mod weather;

@@ -181,3 +181,29 @@ pub enum Fact {
     /// changed the account).
     NightClosed(NightSummary),
 }
+
+impl Fact {
+    /// When it became so, where the fact itself says it: the opening and the close of a night are
+    /// told by the night's own bounds.
+    pub fn at(&self) -> Option<Utc> {
+        match self {
+            Fact::NightOpened { .. } | Fact::NightClosed(_) => None,
+            Fact::PlanPublished(revision) => Some(revision.made_at),
+            Fact::LeaseGranted(lease) => Some(lease.granted),
+            Fact::WeatherNoted(sample) => Some(sample.at),
+            Fact::HoldBegan { at, .. }
+            | Fact::HoldEnded { at, .. }
+            | Fact::LeaseExtended { at, .. }
+            | Fact::VisitEnded { at, .. }
+            | Fact::TargetPaused { at, .. }
+            | Fact::TargetResumed { at, .. }
+            | Fact::TargetUrgent { at, .. }
+            | Fact::VisitSkipped { at, .. }
+            | Fact::Note { at, .. }
+            | Fact::ClockStepped { at, .. }
+            | Fact::DarknessBegan { at }
+            | Fact::DarknessEnded { at }
+            | Fact::Resumed { at } => Some(*at),
+        }
+    }
+}
