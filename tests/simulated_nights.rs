@@ -4,6 +4,7 @@
 use std::collections::{BTreeMap, BTreeSet};
 
 use nightwright::catalogue::TargetId;
+use nightwright::ledger::SqliteLedger;
 use nightwright::night::{
     Event, Fact, HandOut, MOVES, NightBounds, NightReport, NightRules, Phase, PlanRequest, RunMode,
     State,
@@ -461,4 +462,36 @@ fn interfere(turn: u64, seed: u64, run: &mut NightRun, ledger: &mut MemoryLedger
         }),
         _ => {}
     }
+}
+
+/// The real ledger keeps a clumsy night through crashes just as the one in memory does.
+#[test]
+fn the_ledger_on_disk_gives_back_what_was_kept() {
+    let folder = tempfile::tempdir().unwrap();
+    let mut on_disk = SqliteLedger::open(&folder.path().join("nights.sqlite")).unwrap();
+    let mut in_memory = MemoryLedger::default();
+    let night = bounds("2026-12-01", 0);
+    let mut summaries = Vec::new();
+    for ledger in [&mut on_disk as &mut dyn Ledger, &mut in_memory] {
+        let mut world = world(21);
+        world.habits = clumsy();
+        let mut run = NightRun::begin(&mut world, night, ledger).unwrap();
+        let mut turn = 0;
+        while run.step(&mut fill, ledger, &mut Unwatched).unwrap() {
+            turn += 1;
+            if turn % 211 == 0 {
+                run.crash(ledger).unwrap();
+            }
+        }
+        summaries.push(run.account().unwrap().unwrap());
+    }
+    assert_eq!(summaries[0], summaries[1]);
+    let facts = on_disk.facts(night.night).unwrap();
+    assert_eq!(facts, in_memory.facts(night.night).unwrap());
+    assert!(facts.iter().any(|f| matches!(f, Fact::Resumed { .. })));
+    assert_eq!(
+        on_disk.visits(None).unwrap(),
+        in_memory.visits(None).unwrap()
+    );
+    assert_eq!(on_disk.open_night().unwrap(), None);
 }

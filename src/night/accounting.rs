@@ -257,3 +257,6 @@ fn queues(log: &NightLog, until: Utc) -> Vec<InForce> {
         })
         .collect()
 }
+
+#[cfg(test)]
+mod tests;

@@ -277,8 +277,10 @@ impl<'a> Draft<'a> {
         let at = self.absent_since.unwrap_or(self.now.utc);
         let words = detail.clone();
         self.emit(Fact::HoldBegan { at, cause, detail })?;
-        if ran_on && let Some(lease) = self.state.lease() {
-            let (visit, cause) = (lease.visit.clone(), state::loss_by(cause));
+        if let (Some(lease), Some(cause), true) =
+            (self.state.lease(), state::loss_by(cause), ran_on)
+        {
+            let visit = lease.visit.clone();
             self.actions.push(Action::StopVisit { visit, cause });
         }
         if self.state.phase() == Phase::Held {

@@ -227,7 +227,6 @@ impl Machine {
             cause: HoldCause::Ledger,
             detail: detail.to_owned(),
         };
-        let was_running = self.state.stopping().is_none();
         let begun = step.facts[step.fresh_from..].iter();
         let holds = begun.filter(|f| matches!(f, Fact::HoldBegan { .. }));
         for fact in holds.chain([&trouble]) {
@@ -242,12 +241,6 @@ impl Machine {
             .into_iter()
             .filter(|action| matches!(action, Action::StopVisit { .. }))
             .collect();
-        if let (Some(cause), true, true) = (self.state.stopping(), was_running, actions.is_empty())
-            && let Some(lease) = self.state.lease()
-        {
-            let visit = lease.visit.clone();
-            actions.push(Action::StopVisit { visit, cause });
-        }
         actions.push(Action::Notify(Notice::Trouble(format!(
             "the ledger cannot be written: {detail}"
         ))));

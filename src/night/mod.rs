@@ -34,3 +34,6 @@ pub use rules::{
 };
 pub use state::{FoldError, Pause, State, Urgency};
 pub use timers::{Timer, Timers};
+
+#[cfg(test)]
+mod tests;

@@ -306,7 +306,7 @@ impl State {
     fn apply(&mut self, fact: &Fact) -> Result<(), FoldError> {
         match fact {
             Fact::HoldBegan { cause, .. } => self.stop_live(loss_by(*cause)),
-            Fact::VisitSkipped { cause, .. } => self.stop_live(*cause),
+            Fact::VisitSkipped { cause, .. } => self.stop_live(Some(*cause)),
             Fact::PlanPublished(_) => {
                 let newest = self.log.as_ref().and_then(|log| log.revisions.last());
                 self.queue = newest.map(|(_, revision)| Queue {
@@ -350,9 +350,9 @@ impl State {
         Ok(())
     }
 
-    fn stop_live(&mut self, cause: LossCause) {
+    fn stop_live(&mut self, cause: Option<LossCause>) {
         if let Some(live) = &mut self.live {
-            live.stopping.get_or_insert(cause);
+            live.stopping = live.stopping.or(cause);
         }
     }
 
@@ -421,13 +421,14 @@ impl State {
     }
 }
 
-/// What a visit that a hold stops is lost to.
-pub(super) fn loss_by(cause: HoldCause) -> LossCause {
+/// What a visit that such a hold stops is lost to. A ledger that cannot be written stops none:
+/// nothing is unsafe, and the report is asked for again until it can be kept.
+pub(super) fn loss_by(cause: HoldCause) -> Option<LossCause> {
     match cause {
-        HoldCause::Weather | HoldCause::FeedLost => LossCause::Weather,
-        HoldCause::Instrument => LossCause::Instrument,
-        HoldCause::Operator => LossCause::Operator,
-        HoldCause::Ledger => LossCause::Other,
+        HoldCause::Weather | HoldCause::FeedLost => Some(LossCause::Weather),
+        HoldCause::Instrument => Some(LossCause::Instrument),
+        HoldCause::Operator => Some(LossCause::Operator),
+        HoldCause::Ledger => None,
     }
 }
 
