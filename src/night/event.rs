@@ -18,7 +18,8 @@ pub enum Event {
     /// Time has passed: the shell's timer reached [`super::Machine::next_deadline`], or it just
     /// looks round.
     Tick,
-    /// A night begins: sent once, when its noon has passed and the night before is closed.
+    /// A night begins: sent when its noon has passed and the night before is closed; again when
+    /// the answer was [`Refusal::LedgerDown`].
     NightBegins(NightBounds),
     /// The night keeper came back within a night; sent once after [`super::Machine::recover`].
     Restarted,

@@ -105,6 +105,9 @@ impl Machine {
     /// closed or not). Send [`Event::Restarted`] next. The lease under way keeps its end by the
     /// wall clock: the monotonic one did not live through the restart.
     ///
+    /// A report for a night before the present one is settled by a machine recovered from that
+    /// night's facts and turned by that one [`Event::Report`].
+    ///
     /// # Errors
     /// [`FoldError`] when the facts are no night's.
     pub fn recover(rules: NightRules, facts: &[Fact], now: Stamp) -> Result<Self, FoldError> {

@@ -4,6 +4,8 @@ use std::collections::BTreeMap;
 use std::convert::Infallible;
 
 use super::*;
+use proptest::prelude::*;
+
 use crate::catalogue::TargetId;
 use crate::record::{
     EntryKind, Exposures, HoldCause, LossCause, Outcome, PlanCause, PlanRevision, QueueEntry,
@@ -781,4 +783,154 @@ fn the_table_of_moves_is_all_there_is() {
     assert_eq!(legal.count(), MOVES.len() + 1);
     assert!(!Phase::Closing.may_become(Phase::Observing));
     assert!(!Phase::Ready.may_become(Phase::Closing));
+}
+
+/// Any event that may come in, sensible or not.
+fn any_event() -> impl Strategy<Value = Event> {
+    let key = || (0u8..6).prop_map(|n| format!("key {n}"));
+    let visit = || (1u32..8).prop_map(|n| VisitId::of(night(), n));
+    let target = || (0u8..10).prop_map(|n| TargetId::new(&format!("star-{n}")));
+    let by = || Just("keeper".to_owned());
+    let outcome = prop_oneof![
+        Just(Outcome::Done),
+        Just(Outcome::Short),
+        Just(Outcome::Lost(LossCause::Acquisition)),
+        Just(Outcome::Refused),
+        Just(Outcome::Unreported),
+    ];
+    let report = (
+        outcome,
+        proptest::option::of(-10.0..4000.0),
+        -9000i64..90_000,
+        0i64..9000,
+    );
+    let report = report.prop_map(|(outcome, exposed_s, from, length)| VisitReport {
+        outcome,
+        exposing: Some(Span::new(at(from), at(from + length))),
+        exposed_s,
+        ..done()
+    });
+    prop_oneof![
+        6 => Just(Event::Tick),
+        8 => prop_oneof![Just(5.0), Just(13.0), Just(20.0), Just(f64::NAN)].prop_map(wind_now),
+        1 => Just(Event::FeedFailed(FeedFault::Malformed(String::new()))),
+        2 => Just(Event::FeedFailed(FeedFault::Unreachable(String::new()))),
+        1 => Just(Event::PlanFailed { detail: String::new() }),
+        1 => Just(Event::Restarted),
+        8 => key().prop_map(|key| Event::Claim { key, holder: String::new() }),
+        2 => (visit(), -10.0..3000.0).prop_map(|(visit, seconds)| Event::Extend { visit, seconds }),
+        8 => (visit(), key(), report)
+            .prop_map(|(visit, key, report)| Event::Report { visit, key, report }),
+        1 => by().prop_map(|by| Event::Hold { by, reason: String::new() }),
+        2 => by().prop_map(|by| Event::Release { by }),
+        1 => (target(), by())
+            .prop_map(|(target, by)| Event::Pause { target, by, reason: String::new() }),
+        1 => (target(), by()).prop_map(|(target, by)| Event::Resume { target, by }),
+        1 => (target(), by(), 0i64..90_000).prop_map(|(target, by, until)| Event::Urgent {
+            target,
+            until: at(until),
+            by,
+            reason: String::new(),
+        }),
+        1 => by().prop_map(|by| Event::Skip { by }),
+        1 => Just(Event::InstrumentFault { detail: String::new() }),
+        1 => Just(Event::InstrumentMended),
+        1 => Just(Event::LedgerTrouble { detail: String::new() }),
+        1 => Just(Event::LedgerBack),
+        1 => Just(Event::SettingsChanged(Box::new(rules()))),
+    ]
+}
+
+/// A sample whose time stamp is filled in when it is sent.
+fn wind_now(value: f64) -> Event {
+    Event::WeatherArrived(WeatherSample {
+        at: noon(),
+        values: BTreeMap::from([(Quantity::WindMS, value)]),
+        wind_from: None,
+        safe: None,
+    })
+}
+
+/// A turn by chance: how long after the one before (seconds), what happens, whether the disk is
+/// full, whether the plan that is asked for comes at once, and whether the night keeper dies after.
+type Chance = (i64, Event, bool, bool, bool);
+
+fn any_turn() -> impl Strategy<Value = Chance> {
+    let wait = prop_oneof![3 => 0i64..5, 3 => 0i64..400, 1 => 0i64..4000];
+    let rarely = || proptest::bool::weighted(0.05);
+    (
+        wait,
+        any_event(),
+        rarely(),
+        proptest::bool::weighted(0.9),
+        rarely(),
+    )
+}
+
+/// Takes one turn and answers a plan that is asked for; what was kept goes to `bench.kept`.
+fn take_turn(bench: &mut Bench, event: Event, disk_full: bool, plans: bool) {
+    let event = match event {
+        Event::WeatherArrived(sample) => Event::WeatherArrived(WeatherSample {
+            at: at(bench.second),
+            ..sample
+        }),
+        other => other,
+    };
+    let now = stamp(bench.second, 0);
+    let kept = &mut bench.kept;
+    let (done, _) = bench.machine.turn(event, now, |_, facts: &[Fact]| {
+        if disk_full {
+            return Err("disk full");
+        }
+        kept.extend_from_slice(facts);
+        Ok(())
+    });
+    assert!(
+        !matches!(done.reply, Err(Refusal::Broken(_))),
+        "{:?}",
+        done.reply
+    );
+    bench.actions = done.actions;
+    if plans && bench.asked().is_some() {
+        bench.plan(bench.second.max(DUSK_S), 6);
+    }
+}
+
+proptest! {
+    /// Whatever comes in, the record folds to the living state, nothing is handed out in a hold,
+    /// deadlines that were met do not come again at once, and the night closes with an exact account.
+    #[test]
+    fn no_sequence_of_events_breaks_a_night(
+        push in any::<bool>(),
+        turns in proptest::collection::vec(any_turn(), 1..120),
+    ) {
+        let mut rules = rules();
+        rules.weather.stale_after_s = 900.0;
+        rules.hand_out = if push { HandOut::Push } else { HandOut::Pull };
+        let mut bench = Bench::new(rules.clone());
+        bench.go_to(DUSK_S - 1000);
+        for (wait_s, event, disk_full, plans, dies) in turns {
+            bench.second += wait_s;
+            take_turn(&mut bench, event, disk_full, plans);
+            let facts: Vec<Fact> =
+                bench.kept.iter().chain(bench.machine.arrears()).cloned().collect();
+            prop_assert_eq!(&State::replay(&facts).unwrap(), bench.machine.state());
+            if dies {
+                let now = stamp(bench.second, 0);
+                bench.machine = Machine::recover(rules.clone(), &bench.kept, now).unwrap();
+                take_turn(&mut bench, Event::Restarted, false, plans);
+            }
+        }
+        let mut ticks = 0;
+        while let (Some(next), None) =
+            (bench.machine.next_deadline(), bench.machine.state().closed())
+        {
+            bench.second = bench.second.max((next.0 + 999) / 1000);
+            take_turn(&mut bench, Event::Tick, false, true);
+            ticks += 1;
+            prop_assert!(ticks < 2000, "deadlines that were met come again");
+        }
+        let account = bench.machine.state().closed().expect("the night closes");
+        prop_assert_eq!(account.split.total_ms(), (DAWN_S - DUSK_S) * 1000);
+    }
 }

@@ -7,9 +7,10 @@ use crate::night::{NightBounds, NightRules};
 use crate::time::{SpanSet, Utc};
 use crate::weather::Climate;
 
-/// An invented world: climate, faults, an observatory with its habits. What it does depends on the
-/// seed, the realisation and the night, never on what is planned, so that two scenarios with the
-/// same numbers see the same weather and the same faults.
+/// An invented world: climate, faults, an observatory with its habits. Weather, feed and faults
+/// depend on the seed, the realisation and the night, never on what is planned, so that two
+/// scenarios with the same numbers see the same ones; the observatory's habits are drawn visit by
+/// visit. Nights are run in their order, since the sky and a repair go on from one to the next.
 #[derive(Clone, Debug)]
 pub struct World {
     /// Seed of all chance.
