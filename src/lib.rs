@@ -25,6 +25,7 @@ pub mod cli;
 pub mod ephemeris;
 pub mod ledger;
 pub mod night;
+pub mod plan;
 pub mod ports;
 pub mod record;
 pub mod score;

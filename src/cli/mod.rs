@@ -16,8 +16,11 @@ mod check;
 mod init;
 pub mod load;
 pub mod output;
+mod plan;
 mod sky;
+mod stage;
 mod trouble;
+mod views;
 
 use std::path::PathBuf;
 use std::process::ExitCode;
@@ -67,6 +70,7 @@ pub struct Global {
 enum Command {
     Check(check::Args),
     Init(init::Args),
+    Plan(plan::Args),
     Sky(sky::Args),
 }
 
@@ -74,6 +78,7 @@ fn dispatch(command: &Command, global: &Global) -> Result<Exit, Trouble> {
     match command {
         Command::Check(args) => check::run(args, global),
         Command::Init(args) => init::run(args, global),
+        Command::Plan(args) => plan::run(args, global),
         Command::Sky(args) => sky::run(args, global),
     }
 }

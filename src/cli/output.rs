@@ -1,6 +1,7 @@
 //! Standard output and error, without a panic when the reader has gone.
 
 use std::io::{self, Write};
+use std::path::Path;
 
 use super::Trouble;
 
@@ -38,6 +39,28 @@ pub fn print_pieces(pieces: impl IntoIterator<Item = impl AsRef<[u8]>>) -> Resul
 /// As [`print()`].
 pub fn print_json(value: &serde_json::Value) -> Result<(), Trouble> {
     print(&format!("{value:#}"))
+}
+
+/// Writes a file whole: beside it first, through to the disk, then renamed over it. A reader finds
+/// the old text or the new one, never a part.
+///
+/// # Errors
+/// [`Trouble`] when the folder or the disk does not let it.
+pub fn write_whole(path: &Path, text: &str) -> Result<(), Trouble> {
+    let folder = match path.parent() {
+        Some(parent) if !parent.as_os_str().is_empty() => parent,
+        _ => Path::new("."),
+    };
+    let write = || -> io::Result<()> {
+        let mut file = tempfile::Builder::new().tempfile_in(folder)?;
+        file.write_all(text.as_bytes())?;
+        file.as_file().sync_all()?;
+        file.persist(path)?;
+        Ok(())
+    };
+    write().map_err(|error| {
+        Trouble::machine(format!("{} cannot be written", path.display())).because(&error)
+    })
 }
 
 /// Prints a text to standard error. When even that fails, nobody is left to be told.
