@@ -17,6 +17,7 @@ mod init;
 pub mod load;
 pub mod output;
 mod plan;
+mod rehearse;
 mod sky;
 mod stage;
 mod trouble;
@@ -71,6 +72,7 @@ enum Command {
     Check(check::Args),
     Init(init::Args),
     Plan(plan::Args),
+    Rehearse(rehearse::Args),
     Sky(sky::Args),
 }
 
@@ -79,6 +81,7 @@ fn dispatch(command: &Command, global: &Global) -> Result<Exit, Trouble> {
         Command::Check(args) => check::run(args, global),
         Command::Init(args) => init::run(args, global),
         Command::Plan(args) => plan::run(args, global),
+        Command::Rehearse(args) => rehearse::run(args, global),
         Command::Sky(args) => sky::run(args, global),
     }
 }

@@ -6,6 +6,7 @@
 
 mod accounting;
 mod acts;
+mod answer;
 mod draft;
 mod event;
 mod fact;
@@ -20,6 +21,7 @@ mod state;
 mod timers;
 
 pub use accounting::{count, opens, split, summary};
+pub use answer::{ask_of, revision_of};
 pub use event::{Action, Event, Notice, PlanRequest, Refusal, Reply, VisitReport};
 pub use fact::{Fact, Lease, RunMode, Stamp};
 pub use gate::{FeedFault, Gate, Verdict};

@@ -1,0 +1,177 @@
+//! `rehearse`: whole nights in an invented world, with the real planner and night keeper.
+
+use std::path::PathBuf;
+
+use serde_json::{Value, json};
+
+use crate::ledger::SqliteLedger;
+use crate::night::{NightBounds, NightRules, PlanRequest, RunMode, ask_of, revision_of};
+use crate::plan::solve::Settings as Search;
+use crate::plan::{Calendar, Desk, History, Planned, SkyTable};
+use crate::ports::Ledger;
+use crate::record::NightSummary;
+use crate::sim::{Unwatched, World, run_night};
+use crate::time::NightDate;
+
+use super::stage::{Stage, out_of_range, stage};
+use super::{Exit, Global, Trouble, output};
+
+/// Steps of the planner for each queue: counted, not timed, so that a rehearsal can be repeated.
+const STEPS: u64 = 1500;
+
+/// Rehearse nights: the real planner and night keeper against a simulated observatory and weather.
+#[derive(Debug, clap::Args)]
+#[command(after_help = "Example:
+  nightwright rehearse --night 2026-12-01 --nights 2 --ledger rehearsal.sqlite")]
+pub struct Args {
+    /// Date of the first night's evening at the site (default: tonight)
+    #[arg(long, value_name = "DATE")]
+    night: Option<String>,
+    /// Number of nights
+    #[arg(long, value_name = "N", default_value_t = 1)]
+    nights: u32,
+    /// Seed of weather and faults
+    #[arg(long, value_name = "N", default_value_t = 1)]
+    seed: u64,
+    /// Ledger to write to (default: none is kept)
+    #[arg(long, value_name = "FILE")]
+    ledger: Option<PathBuf>,
+    /// Print JSON
+    #[arg(long)]
+    json: bool,
+}
+
+/// Runs the command.
+pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
+    let stage = stage(global)?;
+    let first = stage.night(args.night.as_deref())?;
+    let mut ledger = match &args.ledger {
+        Some(path) => SqliteLedger::open_exclusive(path),
+        None => SqliteLedger::in_memory(),
+    }
+    .map_err(|error| Trouble::from_error(Exit::Misuse, &error))?;
+    let mut rules = NightRules::new(stage.settings.weather.clone());
+    rules.blocked = stage.settings.survey.allocation.blocked.clone();
+    let mut world = World::new(args.seed, 0, stage.settings.climate.clone(), rules);
+    let mut summaries = Vec::new();
+    for index in 0..i64::from(args.nights) {
+        let date = first.plus_nights(index);
+        let summary = one_night(&stage, &mut world, &mut ledger, date)?;
+        if !args.json {
+            output::print(&report(&summary))?;
+        }
+        summaries.push(json_of(&summary));
+    }
+    if args.json {
+        output::print_json(&Value::Array(summaries))?;
+    }
+    Ok(Exit::Fine)
+}
+
+fn one_night(
+    stage: &Stage,
+    world: &mut World,
+    ledger: &mut SqliteLedger,
+    date: NightDate,
+) -> Result<NightSummary, Trouble> {
+    let survey = &stage.settings.survey;
+    let observer = &stage.observer;
+    let visits = ledger
+        .visits(Some(date.plus_nights(-1)))
+        .map_err(|fault| Trouble::from_error(Exit::Machine, &fault))?;
+    let sky = SkyTable::compute(survey, observer, date).map_err(out_of_range)?;
+    let history = History::new(survey, observer, &visits).map_err(out_of_range)?;
+    let accrual = crate::plan::accrual_first(survey, history.first_night(), date);
+    let calendar = Calendar::compute(survey, observer, accrual, date).map_err(out_of_range)?;
+    let desk = Desk::new(survey, observer, &calendar, &sky, history);
+    let search = Search {
+        seed: survey.planning.seed,
+        steps: STEPS,
+        ..Search::default()
+    };
+    let mut failed = None;
+    let mut planner = |request: &PlanRequest| {
+        let planned = desk.plan(&ask_of(request), &search, &mut || true);
+        let planned = planned.unwrap_or_else(|error| {
+            failed = Some(Trouble::from_error(Exit::Misuse, &error));
+            Planned {
+                entries: Vec::new(),
+                left_out: Vec::new(),
+                value: 0.0,
+                bound: None,
+                steps: 0,
+            }
+        });
+        revision_of(request, planned)
+    };
+    let bounds = NightBounds {
+        night: date,
+        span: sky.night.span,
+        darkness: sky.darkness,
+        ours: sky.ours,
+        mode: RunMode::Rehearsal,
+    };
+    let summary = run_night(world, bounds, &mut planner, ledger, &mut Unwatched)
+        .map_err(|fault| Trouble::from_error(Exit::Machine, &fault))?;
+    match failed {
+        Some(trouble) => Err(trouble),
+        None => Ok(summary),
+    }
+}
+
+/// The parts of the split with their labels, in the order of reports.
+fn parts(summary: &NightSummary) -> Vec<(String, i64)> {
+    let split = &summary.split;
+    let mut parts = vec![
+        ("exposing".to_owned(), split.exposing_ms),
+        ("overhead".to_owned(), split.overhead_ms),
+        ("calibration".to_owned(), split.calibration_ms),
+    ];
+    let held = split.held_ms.iter();
+    parts.extend(held.map(|(cause, ms)| (format!("held_{}", cause.label()), *ms)));
+    let idle = split.idle_ms.iter();
+    parts.extend(idle.map(|(cause, ms)| (format!("idle_{}", cause.label()), *ms)));
+    parts
+}
+
+fn json_of(summary: &NightSummary) -> Value {
+    let split: serde_json::Map<String, Value> = parts(summary)
+        .into_iter()
+        .map(|(label, ms)| (label, json!(ms)))
+        .collect();
+    let visits = &summary.visits;
+    json!({
+        "night": summary.night.to_string(),
+        "darkness_ms": summary.darkness.map_or(0, |span| span.length_ms()),
+        "split_ms": split,
+        "visits": {
+            "done": visits.done,
+            "short": visits.short,
+            "lost": visits.lost,
+            "refused": visits.refused,
+            "unreported": visits.unreported,
+        },
+    })
+}
+
+fn report(summary: &NightSummary) -> String {
+    let darkness_ms = summary.darkness.map_or(0, |span| span.length_ms());
+    let mut text = format!(
+        "Night {}: {:.2} h of darkness\n",
+        summary.night,
+        darkness_ms as f64 / 3_600_000.0
+    );
+    for (label, ms) in parts(summary).into_iter().filter(|(_, ms)| *ms > 0) {
+        let share = 100.0 * ms as f64 / darkness_ms.max(1) as f64;
+        text.push_str(&format!(
+            "  {label:<24} {:>8.1} min {share:>5.1} %\n",
+            ms as f64 / 60_000.0
+        ));
+    }
+    let v = &summary.visits;
+    text.push_str(&format!(
+        "  visits: {} done, {} short, {} lost, {} refused, {} unreported\n",
+        v.done, v.short, v.lost, v.refused, v.unreported
+    ));
+    text
+}
