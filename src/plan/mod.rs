@@ -2,7 +2,7 @@
 //!
 //! [`SkyTable`] holds what the sky decides, [`Ask`] what is different tonight. [`plan`] turns both,
 //! with each star's [`Valuer`], into a [`Planned`] queue. The solver behind it knows nothing of
-//! stars: see [`solve`].
+//! stars: see [`mod@solve`].
 
 mod ask;
 mod build;
