@@ -14,17 +14,22 @@
 
 mod check;
 mod init;
+mod ledger;
 pub mod load;
+mod log;
 pub mod output;
 mod plan;
 mod rehearse;
 mod sky;
 mod stage;
+pub mod storage;
 mod trouble;
 mod views;
 
 use std::path::PathBuf;
 use std::process::ExitCode;
+use std::sync::Arc;
+use std::sync::atomic::AtomicBool;
 
 use clap::{Parser, Subcommand};
 
@@ -71,6 +76,8 @@ pub struct Global {
 enum Command {
     Check(check::Args),
     Init(init::Args),
+    Ledger(ledger::Args),
+    Log(log::Args),
     Plan(plan::Args),
     Rehearse(rehearse::Args),
     Sky(sky::Args),
@@ -80,14 +87,28 @@ fn dispatch(command: &Command, global: &Global) -> Result<Exit, Trouble> {
     match command {
         Command::Check(args) => check::run(args, global),
         Command::Init(args) => init::run(args, global),
+        Command::Ledger(args) => ledger::run(args, global),
+        Command::Log(args) => log::run(args, global),
         Command::Plan(args) => plan::run(args, global),
         Command::Rehearse(args) => rehearse::run(args, global),
         Command::Sky(args) => sky::run(args, global),
     }
 }
 
+/// The signal of a file that grows past the limit of its process (POSIX; this number on Linux and the
+/// BSDs).
+const SIGXFSZ: i32 = 25;
+
+/// A file-size limit must be a full disk, which is an error with a remedy, and not the death of the
+/// program in the middle of a write: with a handler in place the write fails instead.
+fn take_a_size_limit_for_a_full_disk() {
+    // Where the system knows no such signal there is nothing to hold off either.
+    let _ = signal_hook::flag::register(SIGXFSZ, Arc::new(AtomicBool::new(false)));
+}
+
 /// Reads the arguments, runs the command, tells what went wrong, and gives the exit code.
 pub fn main() -> ExitCode {
+    take_a_size_limit_for_a_full_disk();
     let cli = Cli::parse();
     match dispatch(&cli.command, &cli.global) {
         Ok(exit) => exit.into(),

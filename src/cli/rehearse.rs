@@ -48,8 +48,7 @@ pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
     let mut ledger = match &args.ledger {
         Some(path) => SqliteLedger::open_exclusive(path),
         None => SqliteLedger::in_memory(),
-    }
-    .map_err(|error| Trouble::from_error(Exit::Misuse, &error))?;
+    }?;
     let mut rules = NightRules::new(stage.settings.weather.clone());
     rules.blocked = stage.settings.survey.allocation.blocked.clone();
     let mut world = World::new(args.seed, 0, stage.settings.climate.clone(), rules);
@@ -76,9 +75,7 @@ fn one_night(
 ) -> Result<NightSummary, Trouble> {
     let survey = &stage.settings.survey;
     let observer = &stage.observer;
-    let visits = ledger
-        .visits(Some(date.plus_nights(-1)))
-        .map_err(|fault| Trouble::from_error(Exit::Machine, &fault))?;
+    let visits = ledger.visits(Some(date.plus_nights(-1)))?;
     let sky = SkyTable::compute(survey, observer, date).map_err(out_of_range)?;
     let history = History::new(survey, observer, &visits).map_err(out_of_range)?;
     let accrual = crate::plan::accrual_first(survey, history.first_night(), date);

@@ -84,13 +84,9 @@ impl Stage {
         tonight: NightDate,
     ) -> Result<Vec<Visit>, Trouble> {
         let path = self.ledger_path(ledger);
-        let opened = SqliteLedger::open_read_only(&path)
-            .map_err(|error| Trouble::from_error(Exit::Misuse, &error))?;
-        match opened {
+        match SqliteLedger::open_read_only(&path)? {
             None => Ok(Vec::new()),
-            Some(ledger) => ledger
-                .visits(Some(tonight.plus_nights(-1)))
-                .map_err(|fault| Trouble::from_error(Exit::Machine, &fault)),
+            Some(ledger) => Ok(ledger.visits(Some(tonight.plus_nights(-1)))?),
         }
     }
 }

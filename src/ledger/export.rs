@@ -10,6 +10,7 @@ use serde_json::{Map, Value};
 
 use super::copy::sync_folder;
 use super::error::{Doing, io_fault};
+use super::votable::{Datatype, Votable};
 use super::{CopyError, SqliteLedger};
 use crate::ports::LedgerFault;
 use crate::time::Utc;
@@ -46,6 +47,8 @@ pub enum ExportFormat {
     Csv,
     /// An array of objects.
     Json,
+    /// VOTable 1.4 in its TABLEDATA form (IVOA Recommendation of 2019-10-21).
+    Votable,
 }
 
 impl ExportFormat {
@@ -53,6 +56,7 @@ impl ExportFormat {
         match self {
             ExportFormat::Csv => "csv",
             ExportFormat::Json => "json",
+            ExportFormat::Votable => "vot",
         }
     }
 }
@@ -61,6 +65,7 @@ impl ExportFormat {
 enum Sink {
     Csv(Box<csv::Writer<BufWriter<File>>>),
     Json(BufWriter<File>, bool),
+    Votable(Votable<File>),
 }
 
 impl SqliteLedger {
@@ -112,9 +117,9 @@ impl SqliteLedger {
             .connection
             .prepare(&format!("SELECT * FROM {table} ORDER BY 1, 2"))
             .map_err(|error| self.reading(error))?;
-        let columns = column_names(&statement);
+        let columns = columns_of(&statement);
         let file = BufWriter::new(File::create(path).map_err(failed)?);
-        let mut sink = Sink::new(file, format, &columns).map_err(failed)?;
+        let mut sink = Sink::new(file, format, table, &columns).map_err(failed)?;
         let mut rows = statement.query([]).map_err(|error| self.reading(error))?;
         let mut count = 0;
         while let Some(row) = rows.next().map_err(|error| self.reading(error))? {
@@ -127,26 +132,33 @@ impl SqliteLedger {
     }
 }
 
-/// A column's name as exported, and whether it holds an instant.
+/// A column's name as exported, and what it holds.
 struct Column {
     name: String,
     instant: bool,
+    datatype: Datatype,
 }
 
-fn column_names(statement: &Statement<'_>) -> Vec<Column> {
-    let names = statement.column_names();
-    names
-        .map(|name| match name.strip_suffix(UNIX_MS_SUFFIX) {
-            Some(stem) => Column {
-                name: format!("{stem}{UTC_SUFFIX}"),
-                instant: true,
-            },
-            None => Column {
-                name: name.to_owned(),
-                instant: false,
-            },
-        })
-        .collect()
+fn columns_of(statement: &Statement<'_>) -> Vec<Column> {
+    let columns = statement.columns();
+    let described = columns.map(|column| {
+        let stem = column.name().strip_suffix(UNIX_MS_SUFFIX);
+        let datatype = match column.decl_type() {
+            _ if stem.is_some() => Datatype::Text,
+            Some("INTEGER") => Datatype::Long,
+            Some("REAL") => Datatype::Double,
+            _ => Datatype::Text,
+        };
+        Column {
+            name: stem.map_or_else(
+                || column.name().to_owned(),
+                |stem| format!("{stem}{UTC_SUFFIX}"),
+            ),
+            instant: stem.is_some(),
+            datatype,
+        }
+    });
+    described.collect()
 }
 
 fn row_values(row: &Row<'_>, columns: &[Column]) -> rusqlite::Result<Vec<Value>> {
@@ -171,6 +183,7 @@ impl Sink {
     fn new(
         mut file: BufWriter<File>,
         format: ExportFormat,
+        table: &str,
         columns: &[Column],
     ) -> std::io::Result<Self> {
         match format {
@@ -182,6 +195,13 @@ impl Sink {
             ExportFormat::Json => {
                 file.write_all(b"[")?;
                 Ok(Sink::Json(file, true))
+            }
+            ExportFormat::Votable => {
+                let fields: Vec<(&str, Datatype)> = columns
+                    .iter()
+                    .map(|column| (column.name.as_str(), column.datatype))
+                    .collect();
+                Ok(Sink::Votable(Votable::begin(file, table, &fields)?))
             }
         }
     }
@@ -196,6 +216,7 @@ impl Sink {
                 let object: Map<String, Value> = names.zip(values).collect();
                 Ok(serde_json::to_writer(file, &object)?)
             }
+            Sink::Votable(votable) => votable.row(&values),
         }
     }
 
@@ -207,6 +228,7 @@ impl Sink {
                 file.write_all(b"\n]\n")?;
                 file
             }
+            Sink::Votable(votable) => votable.end()?,
         };
         file.flush()?;
         file.get_ref().sync_all()

@@ -15,10 +15,12 @@ mod copy;
 mod error;
 mod export;
 mod hand;
+pub mod import;
 mod labels;
 mod open;
 mod read;
 mod rows;
+mod votable;
 mod write;
 
 #[cfg(test)]
