@@ -3,7 +3,7 @@
 use rusqlite::{OptionalExtension, params};
 
 use super::SqliteLedger;
-use super::read::visit_from_row;
+use super::read::{visit_columns, visit_from_row};
 use super::write::{Word, insert_visit};
 use crate::ports::LedgerFault;
 use crate::record::{Visit, VisitId};
@@ -116,7 +116,11 @@ impl SqliteLedger {
     /// # Errors
     /// [`LedgerFault::Unreadable`] or [`LedgerFault::Damaged`].
     pub fn visit(&self, id: &VisitId) -> Result<Option<Visit>, LedgerFault> {
-        let sql = "SELECT * FROM visits_now WHERE visit = ?";
+        let sql = concat!(
+            "SELECT ",
+            visit_columns!(),
+            " FROM visits_now WHERE visit = ?"
+        );
         let found = self
             .connection
             .prepare_cached(sql)
@@ -136,9 +140,13 @@ impl SqliteLedger {
     /// # Errors
     /// [`LedgerFault::Unreadable`] or [`LedgerFault::Damaged`].
     pub fn history(&self) -> Result<Vec<Recorded>, LedgerFault> {
-        let sql = "SELECT *, NOT EXISTS (SELECT 1 FROM visits AS l WHERE l.supersedes = visits.id)
-                     AS stands
-                   FROM visits ORDER BY exposing_start_unix_ms, id";
+        let sql = concat!(
+            "SELECT ",
+            visit_columns!(),
+            ", source, learnt_unix_ms, by_whom, why,
+               NOT EXISTS (SELECT 1 FROM visits AS l WHERE l.supersedes = visits.id) AS stands
+             FROM visits ORDER BY exposing_start_unix_ms, id"
+        );
         self.collect(sql, [], |row| {
             Ok(Recorded {
                 visit: visit_from_row(row)?,
