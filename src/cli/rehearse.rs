@@ -75,6 +75,7 @@ fn one_night(
 ) -> Result<NightSummary, Trouble> {
     let survey = &stage.settings.survey;
     let observer = &stage.observer;
+    ledger.keep_targets(date, survey)?;
     let visits = ledger.visits(Some(date.plus_nights(-1)))?;
     let sky = SkyTable::compute(survey, observer, date).map_err(out_of_range)?;
     let history = History::new(survey, observer, &visits).map_err(out_of_range)?;

@@ -87,10 +87,11 @@ impl SqliteLedger {
                 let mut visit = entry.visit.clone();
                 if visit.id.0.is_empty() {
                     let stem = format!("{}-{}", visit.night, entry.source.mark());
+                    // The plus keeps the reading to the night: most visits supersede nothing.
                     let used: u32 = connection
                         .prepare_cached(
                             "SELECT count(*) FROM visits
-                             WHERE night = ?1 AND supersedes IS NULL
+                             WHERE night = ?1 AND +supersedes IS NULL
                                AND substr(visit, 1, length(?2)) = ?2",
                         )?
                         .query_row(params![visit.night.to_string(), stem], |row| row.get(0))?;

@@ -6,13 +6,14 @@ mod files;
 use std::path::PathBuf;
 
 use super::SqliteLedger;
-use crate::catalogue::TargetId;
+use crate::catalogue::{Survey, TargetId};
 use crate::night::{Fact, Lease, RunMode};
 use crate::ports::{Ledger, LedgerFault};
 use crate::record::{
     DarknessSplit, EntryKind, Exposures, HoldCause, LossCause, NightSummary, Outcome, QueueEntry,
     ValueParts, Visit, VisitCounts, VisitId,
 };
+use crate::settings::{Sources, check};
 use crate::time::{NightDate, Span, Utc};
 
 fn at(text: &str) -> Utc {
@@ -282,4 +283,51 @@ fn migrations_number_the_layout() {
         .pragma_query_value(None, "user_version", |row| row.get(0))
         .unwrap();
     assert_eq!(version, super::LAYOUT);
+}
+
+#[test]
+fn a_target_is_kept_when_its_settings_change() {
+    let mut ledger = SqliteLedger::in_memory().unwrap();
+    let mut survey = survey();
+    let target = survey.targets[0].id.clone();
+    let magnitude = |ledger: &SqliteLedger, nights: i64| {
+        let kept = ledger.target_as_of(&target, night().plus_nights(nights));
+        kept.unwrap()
+            .map(|body| body["magnitude"].as_f64().unwrap())
+    };
+    let first = survey.targets[0].magnitude;
+    ledger.keep_targets(night(), &survey).unwrap();
+    ledger
+        .keep_targets(night().plus_nights(1), &survey)
+        .unwrap();
+    survey.targets[0].magnitude = first + 1.0;
+    ledger
+        .keep_targets(night().plus_nights(2), &survey)
+        .unwrap();
+    assert_eq!(magnitude(&ledger, -1), None);
+    assert_eq!(magnitude(&ledger, 1), Some(first));
+    assert_eq!(magnitude(&ledger, 2), Some(first + 1.0));
+    let rows: usize = ledger
+        .connection
+        .query_row("SELECT count(*) FROM target_snapshots", [], |row| {
+            row.get(0)
+        })
+        .map(|rows: i64| usize::try_from(rows).unwrap())
+        .unwrap();
+    assert_eq!(rows, survey.targets.len() + 1);
+}
+
+/// The shipped survey.
+fn survey() -> Survey {
+    let folder = std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join("config");
+    let files = std::fs::read_dir(folder).unwrap().map(|entry| {
+        let path = entry.unwrap().path();
+        let name = path.file_name().unwrap().to_str().unwrap().to_owned();
+        (name, Ok(std::fs::read(path).unwrap()))
+    });
+    let sources = Sources {
+        files: files.collect(),
+        ..Sources::default()
+    };
+    check(&sources).unwrap().survey
 }
