@@ -5,24 +5,45 @@ use std::process::Output;
 use assert_cmd::Command;
 use serde_json::Value;
 
-fn rehearse(ledger: &std::path::Path) -> Output {
+fn nightwright(args: &[&str]) -> Output {
     Command::cargo_bin("nightwright")
         .expect("the binary is built")
-        .args([
-            "rehearse",
-            "--night",
-            "2026-12-01",
-            "--nights",
-            "2",
-            "--seed",
-            "5",
-            "--json",
-        ])
-        .arg("--ledger")
-        .arg(ledger)
+        .args(args)
         .output()
         .expect("the binary runs")
 }
+
+fn rehearse(ledger: &std::path::Path) -> Output {
+    let ledger = ledger.to_str().expect("a path in UTF-8");
+    nightwright(&[
+        "rehearse",
+        "--night",
+        "2026-12-01",
+        "--nights",
+        "2",
+        "--seed",
+        "5",
+        "--json",
+        "--ledger",
+        ledger,
+    ])
+}
+
+/// Every part that a night may have, whether it occurred or not.
+const PARTS: [&str; 12] = [
+    "exposing",
+    "overhead",
+    "calibration",
+    "held_weather",
+    "held_feed_lost",
+    "held_instrument",
+    "held_operator",
+    "held_ledger",
+    "idle_nothing_to_observe",
+    "idle_waiting",
+    "idle_unclaimed",
+    "idle_not_ours",
+];
 
 #[test]
 fn every_millisecond_of_darkness_is_accounted_for_and_repeats() {
@@ -40,7 +61,32 @@ fn every_millisecond_of_darkness_is_accounted_for_and_repeats() {
     assert_eq!(nights.len(), 2);
     for night in nights {
         let split = night["split_ms"].as_object().expect("a split");
+        assert_eq!(split.keys().collect::<Vec<_>>(), PARTS);
         let sum: i64 = split.values().filter_map(Value::as_i64).sum();
         assert_eq!(Some(sum), night["darkness_ms"].as_i64(), "{night}");
+    }
+}
+
+/// The pace changes when things happen to the onlooker, and nothing of what happens.
+#[test]
+fn a_paced_rehearsal_is_the_same_night_taking_longer() {
+    let night = ["rehearse", "--night", "2026-12-01", "--seed", "5", "--json"];
+    let paced: Vec<&str> = night.into_iter().chain(["--speed", "50000"]).collect();
+    let began = std::time::Instant::now();
+    let slow = nightwright(&paced);
+    // Eleven hours of the night keeper at that pace, whatever the machine does.
+    assert!(began.elapsed().as_secs_f64() > 11.0 * 3600.0 / 50_000.0);
+    assert!(slow.status.success());
+    assert_eq!(slow.stdout, nightwright(&night).stdout);
+}
+
+#[test]
+fn a_pace_that_is_none_is_refused() {
+    for speed in ["0", "-3", "NaN", "inf", "fast"] {
+        let argument = format!("--speed={speed}");
+        let output = nightwright(&["rehearse", "--night", "2026-12-01", &argument]);
+        assert_eq!(output.status.code(), Some(2), "{speed}");
+        let said = String::from_utf8_lossy(&output.stderr);
+        assert!(said.contains("must be a number above 0"), "{speed}: {said}");
     }
 }

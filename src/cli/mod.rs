@@ -18,6 +18,7 @@ mod ledger;
 pub mod load;
 mod log;
 pub mod output;
+mod pace;
 mod plan;
 mod rehearse;
 mod sky;

@@ -10,9 +10,10 @@ use crate::plan::solve::Settings as Search;
 use crate::plan::{Calendar, Desk, History, Planned, SkyTable};
 use crate::ports::Ledger;
 use crate::record::NightSummary;
-use crate::sim::{Unwatched, World, run_night};
+use crate::sim::{World, run_night};
 use crate::time::NightDate;
 
+use super::pace::Pace;
 use super::stage::{Stage, out_of_range, stage};
 use super::{Exit, Global, Trouble, output};
 
@@ -36,9 +37,19 @@ pub struct Args {
     /// Ledger to write to (default: none is kept)
     #[arg(long, value_name = "FILE")]
     ledger: Option<PathBuf>,
+    /// Invented seconds in a real one, to look on as it happens (default: as fast as it goes)
+    #[arg(long, value_name = "X", value_parser = speed)]
+    speed: Option<f64>,
     /// Print JSON
     #[arg(long)]
     json: bool,
+}
+
+fn speed(text: &str) -> Result<f64, String> {
+    match text.parse::<f64>() {
+        Ok(speed) if speed > 0.0 && speed.is_finite() => Ok(speed),
+        _ => Err("must be a number above 0, as 60 for a minute in a second".to_owned()),
+    }
 }
 
 /// Runs the command.
@@ -53,11 +64,12 @@ pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
     rules.blocked = stage.settings.survey.allocation.blocked.clone();
     let mut world = World::new(args.seed, 0, stage.settings.climate.clone(), rules);
     let mut summaries = Vec::new();
+    let mut pace = Pace::new(args.nights, args.speed);
     for index in 0..i64::from(args.nights) {
         let date = first.plus_nights(index);
-        let summary = one_night(&stage, &mut world, &mut ledger, date)?;
+        let summary = one_night(&stage, &mut world, &mut ledger, &mut pace, date)?;
         if !args.json {
-            output::print(&report(&summary))?;
+            pace.aside(|| output::print(&report(&summary)))?;
         }
         summaries.push(json_of(&summary));
     }
@@ -71,8 +83,10 @@ fn one_night(
     stage: &Stage,
     world: &mut World,
     ledger: &mut SqliteLedger,
+    pace: &mut Pace,
     date: NightDate,
 ) -> Result<NightSummary, Trouble> {
+    pace.begin(date);
     let survey = &stage.settings.survey;
     let observer = &stage.observer;
     ledger.keep_targets(date, survey)?;
@@ -109,7 +123,7 @@ fn one_night(
         ours: sky.ours,
         mode: RunMode::Rehearsal,
     };
-    let summary = run_night(world, bounds, &mut planner, ledger, &mut Unwatched)
+    let summary = run_night(world, bounds, &mut planner, ledger, pace)
         .map_err(|fault| Trouble::from_error(Exit::Machine, &fault))?;
     match failed {
         Some(trouble) => Err(trouble),
@@ -117,23 +131,10 @@ fn one_night(
     }
 }
 
-/// The parts of the split with their labels, in the order of reports.
-fn parts(summary: &NightSummary) -> Vec<(String, i64)> {
-    let split = &summary.split;
-    let mut parts = vec![
-        ("exposing".to_owned(), split.exposing_ms),
-        ("overhead".to_owned(), split.overhead_ms),
-        ("calibration".to_owned(), split.calibration_ms),
-    ];
-    let held = split.held_ms.iter();
-    parts.extend(held.map(|(cause, ms)| (format!("held_{}", cause.label()), *ms)));
-    let idle = split.idle_ms.iter();
-    parts.extend(idle.map(|(cause, ms)| (format!("idle_{}", cause.label()), *ms)));
-    parts
-}
-
 fn json_of(summary: &NightSummary) -> Value {
-    let split: serde_json::Map<String, Value> = parts(summary)
+    let split: serde_json::Map<String, Value> = summary
+        .split
+        .parts()
         .into_iter()
         .map(|(label, ms)| (label, json!(ms)))
         .collect();
@@ -159,7 +160,7 @@ fn report(summary: &NightSummary) -> String {
         summary.night,
         darkness_ms as f64 / 3_600_000.0
     );
-    for (label, ms) in parts(summary).into_iter().filter(|(_, ms)| *ms > 0) {
+    for (label, ms) in summary.split.parts().into_iter().filter(|(_, ms)| *ms > 0) {
         let share = 100.0 * ms as f64 / darkness_ms.max(1) as f64;
         text.push_str(&format!(
             "  {label:<24} {:>8.1} min {share:>5.1} %\n",

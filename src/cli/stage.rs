@@ -2,14 +2,14 @@
 
 use std::path::{Path, PathBuf};
 
-use crate::ephemeris::{EarthRotation, EphemerisError, Observer, RotationQuality};
+use crate::ephemeris::{EphemerisError, Observer};
 use crate::ledger::SqliteLedger;
 use crate::ports::Ledger;
 use crate::record::Visit;
 use crate::settings::Settings;
 use crate::time::{Night, NightDate, Utc};
 
-use super::{Exit, Global, Trouble, load, output};
+use super::{Exit, Global, Trouble, load};
 
 /// Settings with the observer made from them.
 pub struct Stage {
@@ -25,15 +25,7 @@ pub struct Stage {
 /// [`Trouble`] with every fault.
 pub fn stage(global: &Global) -> Result<Stage, Trouble> {
     let settings = load::settings(global)?;
-    let earth_rotation = match &settings.earth_rotation {
-        None => EarthRotation::absent(),
-        Some(file) => EarthRotation::from_finals2000a(&file.text).map_err(|error| {
-            Trouble::misuse(format!("{} is no Earth-rotation file", file.file))
-                .because(&error)
-                .hint("give the path of an IERS finals2000A file in site.earth_rotation")
-        })?,
-    };
-    let observer = Observer::new(settings.survey.site.clone(), earth_rotation);
+    let observer = settings.observer();
     Ok(Stage { settings, observer })
 }
 
@@ -52,18 +44,7 @@ impl Stage {
     /// Says on standard error what is not known of the Earth's rotation in a night.
     pub fn mention_earth_rotation(&self, date: NightDate) {
         let night = Night::of(date, self.settings.survey.site.longitude);
-        let note = match self.observer.earth_rotation.quality_over(night.span) {
-            RotationQuality::Measured | RotationQuality::Predicted => return,
-            RotationQuality::Held => {
-                "the Earth-rotation file ends before this night: its last value is held, which is \
-                 wrong by some tenths of a second of time after a year; renew site.earth_rotation"
-            }
-            RotationQuality::Absent => {
-                "no Earth-rotation data for this night: UT1 is taken as UTC, which is wrong by up \
-                 to 0.9 s of time (13\" of hour angle); give site.earth_rotation"
-            }
-        };
-        output::complain(&format!("note: {note}"));
+        load::mention_rotation(self.observer.earth_rotation.quality_over(night.span));
     }
 
     /// The ledger's path: the argument, or the configured one.

@@ -214,6 +214,25 @@ impl DarknessSplit {
             + self.held_ms.values().sum::<i64>()
             + self.idle_ms.values().sum::<i64>()
     }
+
+    /// Every part with its label, milliseconds, in the order of reports: what did not occur stands
+    /// there as 0, so that a reader finds the same labels for every night.
+    pub fn parts(&self) -> Vec<(String, i64)> {
+        let mut parts = vec![
+            ("exposing".to_owned(), self.exposing_ms),
+            ("overhead".to_owned(), self.overhead_ms),
+            ("calibration".to_owned(), self.calibration_ms),
+        ];
+        parts.extend(HoldCause::ALL.iter().map(|cause| {
+            let ms = self.held_ms.get(cause).copied().unwrap_or(0);
+            (format!("held_{}", cause.label()), ms)
+        }));
+        parts.extend(IdleCause::ALL.iter().map(|cause| {
+            let ms = self.idle_ms.get(cause).copied().unwrap_or(0);
+            (format!("idle_{}", cause.label()), ms)
+        }));
+        parts
+    }
 }
 
 /// Visits by outcome (targets and standards; lamps are not counted).
