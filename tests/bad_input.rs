@@ -221,7 +221,7 @@ fn values_of_the_wrong_kind_are_named() {
         )
         .replace(
             "survey.toml",
-            "first_night = \"2026-11-01\"",
+            "# first_night = \"2026-12-01\"",
             "first_night = \"1 Nov\"",
         )
         .replace("targets.toml", "\nmagnitude = ", "\nmagnitude = inf #");

@@ -24,7 +24,7 @@ pub const SHARE_PULL: f64 = 1.0;
 /// A second visit in one night tells less of an orbit of many days than the first.
 pub const REPEAT_WORTH: f64 = 0.6;
 /// Long enough to prove a plan, short enough to wait for.
-pub const BUDGET_MS: u64 = 1500;
+pub const BUDGET_MS: u64 = 800;
 /// Any number does; a fixed one makes two runs agree.
 pub const SEED: u64 = 1;
 /// Programmes count alike unless told.
