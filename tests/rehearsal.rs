@@ -90,3 +90,41 @@ fn a_pace_that_is_none_is_refused() {
         assert!(said.contains("must be a number above 0"), "{speed}: {said}");
     }
 }
+
+#[test]
+fn nights_without_darkness_alone_are_refused_and_leave_no_ledger() {
+    let folder = tempfile::tempdir().expect("a scratch folder");
+    let config = folder.path().join("polar");
+    let config = config.to_str().expect("a path in UTF-8");
+    assert!(nightwright(&["init", config]).status.success());
+    let site = format!("{config}/site.toml");
+    let text = std::fs::read_to_string(&site).expect("the starter has a site");
+    let north: Vec<String> = text
+        .lines()
+        .map(|line| match line.starts_with("latitude_deg") {
+            true => "latitude_deg = 78.0".to_owned(),
+            false => line.to_owned(),
+        })
+        .collect();
+    std::fs::write(&site, north.join("\n")).expect("the site can be written");
+    let ledger = folder.path().join("none.sqlite");
+    let ledger_text = ledger.to_str().expect("a path in UTF-8");
+    let output = nightwright(&[
+        "rehearse",
+        "--config",
+        config,
+        "--night",
+        "2026-06-21",
+        "--nights",
+        "3",
+        "--ledger",
+        ledger_text,
+    ]);
+    assert_eq!(output.status.code(), Some(2));
+    let said = String::from_utf8_lossy(&output.stderr);
+    assert!(
+        said.contains("none of the 3 nights from 2026-06-21 has darkness"),
+        "{said}"
+    );
+    assert!(!ledger.exists());
+}

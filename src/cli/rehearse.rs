@@ -4,6 +4,7 @@ use std::path::PathBuf;
 
 use serde_json::{Value, json};
 
+use crate::ephemeris::darkness;
 use crate::ledger::SqliteLedger;
 use crate::night::{NightBounds, NightRules, PlanRequest, RunMode, ask_of, revision_of};
 use crate::plan::solve::Settings as Search;
@@ -11,7 +12,7 @@ use crate::plan::{Calendar, Desk, History, Planned, SkyTable};
 use crate::ports::Ledger;
 use crate::record::NightSummary;
 use crate::sim::{World, run_night};
-use crate::time::NightDate;
+use crate::time::{Night, NightDate};
 
 use super::pace::Pace;
 use super::stage::{Stage, out_of_range, stage};
@@ -56,6 +57,7 @@ fn speed(text: &str) -> Result<f64, String> {
 pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
     let stage = stage(global)?;
     let first = stage.night(args.night.as_deref())?;
+    some_darkness(&stage, first, args.nights)?;
     let mut ledger = match &args.ledger {
         Some(path) => SqliteLedger::open_exclusive(path),
         None => SqliteLedger::in_memory(),
@@ -77,6 +79,30 @@ pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
         output::print_json(&Value::Array(summaries))?;
     }
     Ok(Exit::Fine)
+}
+
+/// A night without darkness among others is a night of the record; when all are, the person meant
+/// another date or has the wrong site.
+fn some_darkness(stage: &Stage, first: NightDate, nights: u32) -> Result<(), Trouble> {
+    let survey = &stage.settings.survey;
+    let limit = survey.planning.darkness_sun_altitude;
+    for index in 0..i64::from(nights) {
+        let night = Night::of(first.plus_nights(index), survey.site.longitude);
+        let dark = darkness(&stage.observer, night, limit).map_err(out_of_range)?;
+        if dark.is_some() {
+            return Ok(());
+        }
+    }
+    let which = match nights {
+        0 => "no night is asked for".to_owned(),
+        1 => format!("the night {first} has no darkness"),
+        _ => format!("none of the {nights} nights from {first} has darkness"),
+    };
+    Err(Trouble::misuse(format!("{which}, so there is nothing to rehearse")).hint(format!(
+        "the sun must go below {:.0} degrees (planning.darkness_sun_altitude_deg); `nightwright sky` \
+         shows the night",
+        limit.deg()
+    )))
 }
 
 fn one_night(

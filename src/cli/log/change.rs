@@ -16,7 +16,7 @@ use crate::units::Angle;
 /// Add a visit that the ledger does not know.
 #[derive(Debug, clap::Args)]
 #[command(after_help = "Example:
-  nightwright log add NW-0012 --at 2026-12-01T23:30:00Z --exposure-s 900 --snr 85 --rv-error 1.4")]
+  nightwright log add KR0016-56 --at 2026-12-01T23:30:00Z --exposure-s 900 --snr 85 --rv-error 1.4")]
 pub struct AddArgs {
     /// The target
     target: String,

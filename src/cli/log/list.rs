@@ -12,7 +12,7 @@ use crate::time::NightDate;
 /// List the visits as they stand, in order of time.
 #[derive(Debug, clap::Args)]
 #[command(after_help = "Example:
-  nightwright log list --target NW-0012 --since 2026-11-01
+  nightwright log list --target KR0016-56 --since 2026-11-01
   nightwright log list --all --json")]
 pub struct ListArgs {
     /// This target alone

@@ -14,8 +14,8 @@ use crate::time::Utc;
 /// word on a visit that stands in place of the one before, with who said it and why.
 #[derive(Debug, clap::Args)]
 #[command(after_help = "Example:
-  nightwright log add NW-0012 --at 2026-12-01T23:30:00Z --exposure-s 900 --snr 85
-  nightwright log list --target NW-0012 --since 2026-11-01
+  nightwright log add KR0016-56 --at 2026-12-01T23:30:00Z --exposure-s 900 --snr 85
+  nightwright log list --target KR0016-56 --since 2026-11-01
   nightwright log amend 2026-12-01-0003 --outcome lost --cause weather --why 'cloud in the spectrum'
   nightwright log import history.csv --dry-run")]
 pub struct Args {

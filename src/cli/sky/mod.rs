@@ -22,7 +22,7 @@ use crate::time::{Night, NightDate, Utc};
 #[derive(Debug, clap::Args)]
 #[command(after_help = "Example:
   nightwright sky --night 2026-12-01
-  nightwright sky --at 2026-12-02T03:00:00Z,2026-12-02T04:00:00Z --target NW-001
+  nightwright sky --at 2026-12-02T03:00:00Z,2026-12-02T04:00:00Z --target KR0016-56
   nightwright sky --times instants.txt --json")]
 pub struct Args {
     /// Night by the date of its evening at the site [default: tonight]
