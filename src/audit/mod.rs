@@ -9,6 +9,7 @@ mod phases;
 mod programmes;
 mod sampling;
 mod sensitivity;
+mod star;
 mod velocity;
 
 pub use causes::{NightFacts, OwedByCause, OwedCause, attribute_owed};
@@ -22,4 +23,5 @@ pub use phases::{Evenness, PhaseCoverage, kuiper};
 pub use programmes::{ProgrammeUse, programme_use};
 pub use sampling::{Alias, Peak, SpectralWindow, aliases, natural_name, window_power};
 pub use sensitivity::{Sensitivity, log_spaced_periods, sensitivity};
+pub use star::{CandidateAudit, DETECTION_SNR, StarAudit, StarRecord};
 pub use velocity::{ErrorPair, NightErrors, VelocityErrors, VelocityRange};

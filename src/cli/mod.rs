@@ -12,6 +12,7 @@
 //! `dispatch`. A command loads the settings with [`load::settings`], prints through
 //! [`output::print`], and says what went wrong with a [`Trouble`], which knows its exit code.
 
+mod audit;
 mod check;
 mod init;
 mod ledger;
@@ -75,6 +76,7 @@ pub struct Global {
 /// The commands.
 #[derive(Debug, Subcommand)]
 enum Command {
+    Audit(audit::Args),
     Check(check::Args),
     Init(init::Args),
     Ledger(ledger::Args),
@@ -86,6 +88,7 @@ enum Command {
 
 fn dispatch(command: &Command, global: &Global) -> Result<Exit, Trouble> {
     match command {
+        Command::Audit(args) => audit::run(args, global),
         Command::Check(args) => check::run(args, global),
         Command::Init(args) => init::run(args, global),
         Command::Ledger(args) => ledger::run(args, global),
