@@ -6,11 +6,11 @@
 //! | floor | folders |
 //! | --- | --- |
 //! | 7 | [`cli`] |
-//! | 6 | `daemon`, `season` |
-//! | 5 | `ledger`, `devices`, `sim` |
+//! | 6 | `daemon`, [`season`] |
+//! | 5 | [`ledger`], `devices`, [`sim`] |
 //! | 4 | [`ports`] |
 //! | 3 | [`night`], [`settings`] |
-//! | 2 | [`score`], `plan`, `audit` |
+//! | 2 | [`score`], [`plan`], [`audit`] |
 //! | 1 | [`ephemeris`], [`catalogue`], [`weather`], [`record`] |
 //! | 0 | [`units`], [`time`] |
 //!
@@ -29,6 +29,7 @@ pub mod plan;
 pub mod ports;
 pub mod record;
 pub mod score;
+pub mod season;
 pub mod settings;
 pub mod sim;
 pub mod time;

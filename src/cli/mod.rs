@@ -22,6 +22,7 @@ pub mod output;
 mod pace;
 mod plan;
 mod rehearse;
+mod season;
 mod sky;
 mod stage;
 pub mod storage;
@@ -83,6 +84,7 @@ enum Command {
     Log(log::Args),
     Plan(plan::Args),
     Rehearse(rehearse::Args),
+    Season(season::Args),
     Sky(sky::Args),
 }
 
@@ -95,6 +97,7 @@ fn dispatch(command: &Command, global: &Global) -> Result<Exit, Trouble> {
         Command::Log(args) => log::run(args, global),
         Command::Plan(args) => plan::run(args, global),
         Command::Rehearse(args) => rehearse::run(args, global),
+        Command::Season(args) => season::run(args, global),
         Command::Sky(args) => sky::run(args, global),
     }
 }

@@ -6,12 +6,12 @@ use serde_json::{Value, json};
 
 use crate::ephemeris::darkness;
 use crate::ledger::SqliteLedger;
-use crate::night::{NightBounds, NightRules, PlanRequest, RunMode, ask_of, revision_of};
+use crate::night::NightRules;
 use crate::plan::solve::Settings as Search;
-use crate::plan::{Calendar, Desk, History, Planned, SkyTable};
+use crate::plan::{Calendar, Desk, History, SkyTable};
 use crate::ports::Ledger;
 use crate::record::NightSummary;
-use crate::sim::{World, run_night};
+use crate::sim::{RehearsalError, World, rehearse_night};
 use crate::time::{Night, NightDate};
 
 use super::pace::Pace;
@@ -127,33 +127,14 @@ fn one_night(
         steps: STEPS,
         ..Search::default()
     };
-    let mut failed = None;
-    let mut planner = |request: &PlanRequest| {
-        let planned = desk.plan(&ask_of(request), &search, &mut || true);
-        let planned = planned.unwrap_or_else(|error| {
-            failed = Some(Trouble::from_error(Exit::Misuse, &error));
-            Planned {
-                entries: Vec::new(),
-                left_out: Vec::new(),
-                value: 0.0,
-                bound: None,
-                steps: 0,
-            }
-        });
-        revision_of(request, planned)
-    };
-    let bounds = NightBounds {
-        night: date,
-        span: sky.night.span,
-        darkness: sky.darkness,
-        ours: sky.ours,
-        mode: RunMode::Rehearsal,
-    };
-    let summary = run_night(world, bounds, &mut planner, ledger, pace)
-        .map_err(|fault| Trouble::from_error(Exit::Machine, &fault))?;
-    match failed {
-        Some(trouble) => Err(trouble),
-        None => Ok(summary),
+    rehearse_night(world, (&desk, &sky), &search, ledger, pace).map_err(trouble_of)
+}
+
+/// A planner's refusal lies in what it was given, all else in the machine or the program.
+fn trouble_of(error: RehearsalError) -> Trouble {
+    match error {
+        RehearsalError::Plan(error) => Trouble::from_error(Exit::Misuse, &error),
+        RehearsalError::Night(fault) => Trouble::from_error(Exit::Machine, &fault),
     }
 }
 

@@ -33,7 +33,7 @@ use self::queue::Reading;
 use self::solve::{ProblemError, Settings, solve};
 
 /// A queue with what is known of how good it is.
-#[derive(Clone, Debug, PartialEq)]
+#[derive(Clone, Debug, Default, PartialEq)]
 pub struct Planned {
     /// Entries in order of time.
     pub entries: Vec<QueueEntry>,

@@ -215,6 +215,19 @@ impl DarknessSplit {
             + self.idle_ms.values().sum::<i64>()
     }
 
+    /// Adds another split to this one, part by part.
+    pub fn add(&mut self, other: &DarknessSplit) {
+        self.exposing_ms += other.exposing_ms;
+        self.overhead_ms += other.overhead_ms;
+        self.calibration_ms += other.calibration_ms;
+        for (cause, ms) in &other.held_ms {
+            *self.held_ms.entry(*cause).or_default() += ms;
+        }
+        for (cause, ms) in &other.idle_ms {
+            *self.idle_ms.entry(*cause).or_default() += ms;
+        }
+    }
+
     /// Every part with its label, milliseconds, in the order of reports: what did not occur stands
     /// there as 0, so that a reader finds the same labels for every night.
     pub fn parts(&self) -> Vec<(String, i64)> {

@@ -3,6 +3,7 @@
 
 mod chance;
 mod clock;
+mod desk;
 mod drive;
 mod ledger;
 mod observatory;
@@ -11,6 +12,7 @@ mod world;
 
 pub use chance::{Purpose, between, exponential, happens, normal, stream};
 pub use clock::SimClock;
+pub use desk::{RehearsalError, rehearse_night};
 pub use drive::{NightRun, Planner, SimFault, Unwatched, Watch, run_night};
 pub use ledger::MemoryLedger;
 pub use observatory::{Habits, SimObservatory};
