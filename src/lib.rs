@@ -11,7 +11,7 @@
 //! | 4 | [`ports`] |
 //! | 3 | [`night`], [`settings`] |
 //! | 2 | [`score`], [`plan`], [`audit`] |
-//! | 1 | [`ephemeris`], [`catalogue`], [`weather`], [`record`] |
+//! | 1 | [`ephemeris`], [`catalogue`], [`weather`], [`record`], [`page`] |
 //! | 0 | [`units`], [`time`] |
 //!
 //! Floors 0 to 3 are pure: no file, socket, clock, log, print or environment; `now` is an argument.
@@ -25,6 +25,7 @@ pub mod cli;
 pub mod ephemeris;
 pub mod ledger;
 pub mod night;
+pub mod page;
 pub mod plan;
 pub mod ports;
 pub mod record;

@@ -14,6 +14,7 @@ const FLOORS: &[(&str, u8)] = &[
     ("catalogue", 1),
     ("weather", 1),
     ("record", 1),
+    ("page", 1),
     ("score", 2),
     ("plan", 2),
     ("audit", 2),
