@@ -7,7 +7,7 @@
 //! | --- | --- |
 //! | 7 | [`cli`] |
 //! | 6 | `daemon`, [`season`] |
-//! | 5 | [`ledger`], `devices`, [`sim`] |
+//! | 5 | [`ledger`], [`devices`], [`sim`] |
 //! | 4 | [`ports`] |
 //! | 3 | [`night`], [`settings`] |
 //! | 2 | [`score`], [`plan`], [`audit`] |
@@ -22,6 +22,7 @@
 pub mod audit;
 pub mod catalogue;
 pub mod cli;
+pub mod devices;
 pub mod ephemeris;
 pub mod ledger;
 pub mod night;

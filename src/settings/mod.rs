@@ -24,6 +24,7 @@ mod finding;
 mod list;
 mod node;
 mod range;
+mod reading;
 mod section;
 mod site;
 mod spectral;
@@ -42,6 +43,7 @@ pub use feed::{
     AlpacaFeed, Feed, FeedSource, JsonFeed, MappedKind, MappedValue, RecordedWeather, TimeFormat,
 };
 pub use finding::{Faults, Finding, Place, Places, Severity};
+pub use reading::{Implausible, Readings};
 
 use finding::Sink;
 use node::{Node, Value};

@@ -1,0 +1,13 @@
+//! Floor 5: the real world behind the traits of `ports`: the system's clock, weather feeds, visits
+//! carried out by a command, and a webhook. Whatever a device does, it ends as a typed fault or a
+//! plain word to the night keeper, never as a panic and never as an endless wait.
+//!
+//! Nothing here protects people, dome or optics: the interlocks of the observatory do.
+
+mod clock;
+mod http;
+mod weather;
+
+pub use clock::SystemClock;
+pub use http::ClientFault;
+pub use weather::{LiveFeed, Pacing};
