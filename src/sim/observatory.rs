@@ -8,7 +8,7 @@ use rand_chacha::ChaCha8Rng;
 use super::chance::{between, exponential, happens};
 use crate::night::{Lease, VisitReport};
 use crate::ports::{Observatory, ObservatoryFault};
-use crate::record::{LossCause, Outcome, VisitId};
+use crate::record::{EntryKind, LossCause, Outcome, VisitId};
 use crate::time::{MonotonicMs, Span};
 
 use super::clock::SimClock;
@@ -208,7 +208,12 @@ impl SimObservatory {
         let entry = &lease.entry;
         let planned_ms = entry.end - entry.start;
         let start = now.plus_ms(milliseconds(entry.setup_s) + late_ms);
-        let (outcome, length_ms, part) = self.fate(fate, planned_ms, overrun_ms, share);
+        // Lamps shine on the fibre whatever the telescope finds.
+        let cause = match entry.kind {
+            EntryKind::Calibration => LossCause::Instrument,
+            EntryKind::Science | EntryKind::Standard => LossCause::Acquisition,
+        };
+        let (outcome, length_ms, part) = self.fate(fate, cause, (planned_ms, overrun_ms), share);
         let end = if outcome == Outcome::Refused {
             now
         } else {
@@ -228,8 +233,14 @@ impl SimObservatory {
         }
     }
 
-    /// Outcome, time on the star in milliseconds, and share of the exposures gathered.
-    fn fate(&self, fate: f64, planned_ms: i64, overrun_ms: i64, share: f64) -> (Outcome, i64, f64) {
+    /// Outcome (lost to `cause`, if it is), time on the star in milliseconds, and share of the exposures gathered.
+    fn fate(
+        &self,
+        fate: f64,
+        cause: LossCause,
+        (planned_ms, overrun_ms): (i64, i64),
+        share: f64,
+    ) -> (Outcome, i64, f64) {
         let habits = &self.habits;
         let mut line = habits.refused_odds;
         if fate < line {
@@ -237,7 +248,7 @@ impl SimObservatory {
         }
         line += habits.lost_odds;
         if fate < line {
-            return (Outcome::Lost(LossCause::Acquisition), 0, 0.0);
+            return (Outcome::Lost(cause), 0, 0.0);
         }
         line += habits.short_odds;
         if fate < line {
