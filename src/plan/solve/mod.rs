@@ -28,6 +28,10 @@ use roster::{Night, placements};
 use search::{Judge, Search};
 use tables::{Tables, UNIT};
 
+/// A step of the bound is taken for so many steps in all while the bound has not settled: about
+/// half of the time for each, so that a short budget gives both a plan and a proof.
+const SEARCH_PER_BOUND: u64 = 8;
+
 /// How long and how to search.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Settings {
@@ -113,14 +117,15 @@ pub fn solve(
     search.offer(start);
     let guess = match warm.and_then(|warm| warm.prices.as_ref()) {
         Some(prices) => Multipliers::from_prices(t, prices),
-        None => Multipliers::guess(t, search::going_rate(dispatched, t.slots)),
+        None => Multipliers::guess(t),
     };
     search.refill_all(&guess.node, 0.5);
     let mut relaxation = Relaxation::new(t, guess);
     let mut steps = 0;
     while steps < settings.steps && keep_going() {
         steps += 1;
-        if relaxation.steps < settings.bound_steps && !relaxation.settled() {
+        let wants_bound = relaxation.steps < settings.bound_steps && !relaxation.settled();
+        if wants_bound && (steps - 1).is_multiple_of(SEARCH_PER_BOUND) {
             relaxation.step(search.best.0.max(0) * UNIT);
         } else {
             search.step(&relaxation.best.node);

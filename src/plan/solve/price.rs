@@ -75,12 +75,12 @@ impl Multipliers {
         }
     }
 
-    /// A first guess: what the best start of a visit is worth beyond its time at a going rate.
-    pub(super) fn guess(t: &Tables, rate: f64) -> Self {
+    /// A first guess: what the best start of a visit is worth beyond its time at the going rate.
+    pub(super) fn guess(t: &Tables) -> Self {
+        let rate = going_rate(t);
         let mut guess = Multipliers::zero(t);
         for start in 0..t.node.len() {
-            let span = f64::from(t.end[start] - t.slot[start]) + t.setup_min as f64 + 0.5;
-            let rent = (f64::from(t.worth[start]) - rate * span) * UNIT as f64;
+            let rent = (f64::from(t.worth[start]) - rate * span(t, start)) * UNIT as f64;
             let node = &mut guess.node[t.node[start] as usize];
             *node = node.max(rent);
         }
@@ -141,6 +141,35 @@ impl Multipliers {
             must: self.must.iter().map(|&price| value(price)).collect(),
         }
     }
+}
+
+/// Slots that a visit takes, set-up included.
+fn span(t: &Tables, start: usize) -> f64 {
+    f64::from(t.end[start] - t.slot[start]) + t.setup_min as f64 + 0.5
+}
+
+/// What a slot is worth at the margin: visits fill the night in the order of what they give a slot,
+/// and the one with which it is full sets the rate (the linear knapsack, Dantzig 1957). An average
+/// would let a few calibrations of great value speak for all.
+fn going_rate(t: &Tables) -> f64 {
+    let mut best = vec![(0.0, 0.0); t.nodes.len()];
+    for start in 0..t.node.len() {
+        let span = span(t, start);
+        let rate = f64::from(t.worth[start]) / span;
+        let of = &mut best[t.node[start] as usize];
+        if rate > of.0 {
+            *of = (rate, span);
+        }
+    }
+    best.sort_by(|a, b| b.0.total_cmp(&a.0));
+    let mut left = t.slots as f64;
+    for (rate, span) in best {
+        left -= span;
+        if left <= 0.0 {
+            return rate;
+        }
+    }
+    0.0
 }
 
 /// The relaxed problem with its prices, and the best bound so far.

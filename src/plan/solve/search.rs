@@ -185,8 +185,3 @@ impl<'a> Search<'a> {
         }
     }
 }
-
-/// What a slot is worth on the average, where the whole night is worth so much.
-pub(super) fn going_rate(worth: i64, slots: usize) -> f64 {
-    worth.max(0) as f64 / slots.max(1) as f64
-}
