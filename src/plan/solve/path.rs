@@ -23,7 +23,6 @@ struct Entry {
     pred: u32,
     pred_task: u32,
     start: u32,
-    end: u32,
 }
 
 impl Entry {
@@ -35,7 +34,7 @@ impl Entry {
 }
 
 /// The two best ways found so far to come to a start, over different last visits.
-#[derive(Clone, Copy)]
+#[derive(Clone, Copy, Debug)]
 struct TopTwo {
     value: [i64; 2],
     from: [u32; 2],
@@ -85,6 +84,10 @@ pub(super) struct Longest {
     base: Vec<Entry>,
     /// What a path must beat to enter the base.
     floor: i64,
+    /// Ways to come to the starts of the slot in hand; each node's place among them; who wants more.
+    tops: Vec<TopTwo>,
+    place_of: Vec<u32>,
+    wanting: Vec<u64>,
 }
 
 impl Longest {
@@ -98,6 +101,9 @@ impl Longest {
             fresh_at: Vec::new(),
             base: Vec::new(),
             floor: NEVER / 2,
+            tops: Vec::new(),
+            place_of: vec![0; tables.nodes.len()],
+            wanting: Vec::new(),
         }
     }
 
@@ -116,10 +122,8 @@ impl Longest {
             if let Some(end) = slot.checked_sub(t.setup_max) {
                 self.absorb(end);
             }
-            let recent =
-                (slot + 1).saturating_sub(t.setup_max)..(slot + 1).saturating_sub(t.setup_min);
-            for start in t.starts_at(slot) {
-                let top = self.arrive(t, start, slot as u32, recent.clone());
+            self.arrive(t, slot);
+            for (start, top) in t.starts_at(slot).zip(&self.tops) {
                 let own = priced[start];
                 let at = 2 * start;
                 for k in 0..2 {
@@ -142,42 +146,64 @@ impl Longest {
         best.0
     }
 
+    /// Finds the two best ways to come to each start of the slot.
+    ///
+    /// Paths are taken one by one, best first, and offered to all starts at once that they may be
+    /// continued by: a set of bits holds the starts that still want one. A start drops out when its
+    /// second best way is as good.
+    fn arrive(&mut self, t: &Tables, slot: usize) {
+        let starts = t.starts_at(slot);
+        self.tops.clear();
+        self.tops.resize(starts.len(), TopTwo::EMPTY);
+        for (place, start) in starts.enumerate() {
+            let node = t.node[start];
+            self.place_of[node as usize] = place as u32;
+            if slot as u32 >= t.first[t.nodes[node as usize].task as usize] {
+                self.tops[place].offer(0, NONE, NONE);
+            }
+        }
+        let mut wanting = std::mem::take(&mut self.wanting);
+        wanting.clear();
+        wanting.extend_from_slice(t.active(slot));
+        for at in 0..self.base.len() {
+            let entry = self.base[at];
+            self.offer(t, &entry, slot, &mut wanting, None);
+        }
+        for end in (slot + 1).saturating_sub(t.setup_max)..(slot + 1).saturating_sub(t.setup_min) {
+            wanting.clear();
+            wanting.extend_from_slice(t.active(slot));
+            for at in self.fresh_at[end] as usize..self.fresh_at[end + 1] as usize {
+                let entry = self.fresh[at];
+                let ready = t.ready(entry.task, end, slot - end);
+                self.offer(t, &entry, slot, &mut wanting, Some(ready));
+            }
+        }
+        self.wanting = wanting;
+    }
+
     #[inline]
-    fn arrive(
-        &self,
+    fn offer(
+        &mut self,
         t: &Tables,
-        start: usize,
-        slot: u32,
-        recent: std::ops::Range<usize>,
-    ) -> TopTwo {
-        let node = t.node[start];
-        let task = t.nodes[node as usize].task;
-        let mut top = TopTwo::EMPTY;
-        if slot >= t.first[task as usize] {
-            top.offer(0, NONE, NONE);
-        }
-        for entry in &self.base {
-            if entry.value <= top.value[1] {
-                break;
-            }
-            if follows(t, entry, node, task, slot) {
-                top.offer(entry.value, entry.label, entry.node);
-            }
-        }
-        for end in recent.rev() {
-            let wait = slot - end as u32;
-            let list = self.fresh_at[end] as usize..self.fresh_at[end + 1] as usize;
-            for entry in &self.fresh[list] {
+        entry: &Entry,
+        slot: usize,
+        wanting: &mut [u64],
+        ready: Option<&[u64]>,
+    ) {
+        for (word, wanting) in wanting.iter_mut().enumerate() {
+            let mut nodes = *wanting & ready.map_or(u64::MAX, |ready| ready[word]);
+            while nodes != 0 {
+                let bit = nodes.trailing_zeros();
+                nodes &= nodes - 1;
+                let node = word as u32 * 64 + bit;
+                let top = &mut self.tops[self.place_of[node as usize] as usize];
                 if entry.value <= top.value[1] {
-                    break;
-                }
-                let setup = u32::from(t.setup_row(entry.task, entry.end)[task as usize]);
-                if setup <= wait && follows(t, entry, node, task, slot) {
+                    *wanting &= !(1 << bit);
+                } else if follows(t, entry, node, slot as u32) {
                     top.offer(entry.value, entry.label, entry.node);
                 }
             }
         }
-        top
     }
 
     /// Lists the paths that end at `end` and could beat the base, best first.
@@ -222,17 +248,18 @@ fn entry(t: &Tables, start: u32, label: u32, value: i64, pred: u32) -> Entry {
         pred,
         pred_task,
         start: t.slot[start as usize],
-        end: t.end[start as usize],
     }
 }
 
 /// May a path that ends so be continued by this visit? (The set-up is looked at elsewhere.)
 #[inline]
-fn follows(t: &Tables, entry: &Entry, node: u32, task: u32, slot: u32) -> bool {
+fn follows(t: &Tables, entry: &Entry, node: u32, slot: u32) -> bool {
     if entry.pred == node {
         return false;
     }
-    entry.task != task || (node == entry.node + 1 && slot >= entry.start + t.gap[task as usize])
+    let task = entry.task;
+    !t.nodes_of(task).contains(&node)
+        || (node == entry.node + 1 && slot >= entry.start + t.gap[task as usize])
 }
 
 /// Drops from the base what no next visit can want, and returns the value that a path must beat to

@@ -45,8 +45,14 @@ pub(super) struct Tables {
     by_node: Vec<u32>,
     /// Set-up tables by epoch, from, to.
     setup: Vec<u8>,
-    /// First entry of the table that holds for a departure slot.
+    /// The table that holds for a departure slot.
     epoch_of: Vec<u32>,
+    /// Words of a set of nodes.
+    pub words: usize,
+    /// By slot: the nodes that may start.
+    active: Vec<u64>,
+    /// By epoch, wait beyond the shortest set-up, and task: the nodes whose set-up is then over.
+    ready: Vec<u64>,
     pub tasks: usize,
     pub setup_min: usize,
     pub setup_max: usize,
@@ -89,6 +95,9 @@ impl Tables {
             by_node: Vec::new(),
             setup: Vec::new(),
             epoch_of: Vec::new(),
+            words: 0,
+            active: Vec::new(),
+            ready: Vec::new(),
             tasks: problem.tasks.len(),
             setup_min: 0,
             setup_max: 0,
@@ -105,8 +114,25 @@ impl Tables {
     /// The set-ups from a task for a visit that ended at `departure`.
     #[inline]
     pub(super) fn setup_row(&self, from: u32, departure: u32) -> &[u8] {
-        let at = self.epoch_of[departure as usize] as usize + from as usize * self.tasks;
+        let epoch = self.epoch_of[departure as usize] as usize;
+        let at = (epoch * self.tasks + from as usize) * self.tasks;
         &self.setup[at..at + self.tasks]
+    }
+
+    /// The nodes that may start in a slot, as a set of bits.
+    #[inline]
+    pub(super) fn active(&self, slot: usize) -> &[u64] {
+        &self.active[slot * self.words..(slot + 1) * self.words]
+    }
+
+    /// The nodes whose set-up is over `wait` slots after a visit to `from` ended at `departure`;
+    /// only for waits from the shortest to below the longest set-up.
+    #[inline]
+    pub(super) fn ready(&self, from: u32, departure: usize, wait: usize) -> &[u64] {
+        let waits = self.setup_max - self.setup_min;
+        let row = self.epoch_of[departure] as usize * waits + wait - self.setup_min;
+        let at = (row * self.tasks + from as usize) * self.words;
+        &self.ready[at..at + self.words]
     }
 
     /// The nodes of a task.
@@ -192,8 +218,33 @@ impl Tables {
         self.setup_min = least.min(most);
         let last = setups.epochs() - 1;
         self.epoch_of = (0..=self.slots)
-            .map(|slot| (slot / setups.epoch_slots() as usize).min(last) as u32 * (n * n) as u32)
+            .map(|slot| (slot / setups.epoch_slots() as usize).min(last) as u32)
             .collect();
+        self.fill_sets(setups.epochs());
+    }
+
+    fn fill_sets(&mut self, epochs: usize) {
+        let words = self.nodes.len().div_ceil(64).max(1);
+        self.words = words;
+        self.active = vec![0; self.slots * words];
+        for (&node, &slot) in self.node.iter().zip(&self.slot) {
+            let at = slot as usize * words + node as usize / 64;
+            self.active[at] |= 1 << (node % 64);
+        }
+        for epoch in 0..epochs {
+            for wait in self.setup_min..self.setup_max {
+                for from in 0..self.tasks {
+                    let row = &self.setup[(epoch * self.tasks + from) * self.tasks..];
+                    let mut set = vec![0u64; words];
+                    for (at, node) in self.nodes.iter().enumerate() {
+                        if usize::from(row[node.task as usize]) <= wait {
+                            set[at / 64] |= 1 << (at % 64);
+                        }
+                    }
+                    self.ready.extend(set);
+                }
+            }
+        }
     }
 
     fn fill_groups(&mut self, problem: &Problem) {
