@@ -14,9 +14,9 @@ use crate::sim::RehearsalError;
 use crate::time::NightDate;
 
 /// Steps of the search for each queue of a season.
-const STEPS: u64 = 120;
+const STEPS: u64 = 24;
 /// Of these, steps of the bound, which price the night for the search.
-const BOUND_STEPS: u64 = 40;
+const BOUND_STEPS: u64 = 1;
 
 /// Which season.
 #[derive(Clone, Debug, PartialEq)]
