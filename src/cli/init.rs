@@ -2,6 +2,7 @@
 
 use std::fs::{self, OpenOptions};
 use std::io::{self, Write};
+use std::os::unix::fs::OpenOptionsExt;
 use std::path::{Path, PathBuf};
 
 use super::{Exit, Global, Trouble, output};
@@ -18,7 +19,7 @@ pub struct Args {
 }
 
 /// The shipped configuration itself, so that the starter cannot differ from it.
-const STARTER: [(&str, &str); 6] = [
+const STARTER: [(&str, &str); 7] = [
     ("site.toml", include_str!("../../config/site.toml")),
     (
         "observatory.toml",
@@ -31,6 +32,7 @@ const STARTER: [(&str, &str); 6] = [
         "finals2000A.txt",
         include_str!("../../config/finals2000A.txt"),
     ),
+    ("carry-out.sh", include_str!("../../config/carry-out.sh")),
 ];
 
 /// Runs the command.
@@ -78,9 +80,15 @@ fn make_empty_folder(dir: &Path) -> Result<(), Trouble> {
     }
 }
 
-/// Writes a file that must not exist yet, through to the disk.
+/// Writes a file that must not exist yet, through to the disk. A script may be run; the umask takes
+/// away what the machine's owner wants taken away.
 fn write_new(path: &Path, text: &str) -> io::Result<()> {
-    let mut file = OpenOptions::new().write(true).create_new(true).open(path)?;
+    let script = path.extension().is_some_and(|extension| extension == "sh");
+    let mut file = OpenOptions::new()
+        .write(true)
+        .create_new(true)
+        .mode(if script { 0o777 } else { 0o666 })
+        .open(path)?;
     file.write_all(text.as_bytes())?;
     file.sync_all()
 }

@@ -22,6 +22,7 @@ pub mod output;
 mod pace;
 mod plan;
 mod rehearse;
+mod replay;
 mod season;
 mod sky;
 mod stage;

@@ -15,6 +15,7 @@ use crate::sim::{RehearsalError, World, rehearse_night};
 use crate::time::{Night, NightDate};
 
 use super::pace::Pace;
+use super::replay::Replay;
 use super::stage::{Stage, out_of_range, stage};
 use super::{Exit, Global, Trouble, output};
 
@@ -41,6 +42,10 @@ pub struct Args {
     /// Invented seconds in a real one, to look on as it happens (default: as fast as it goes)
     #[arg(long, value_name = "X", value_parser = speed)]
     speed: Option<f64>,
+    /// Recorded weather to replay in place of a drawn one: a CSV file, its columns mapped in
+    /// night.toml under [recorded_weather]
+    #[arg(long, value_name = "FILE")]
+    weather: Option<PathBuf>,
     /// Print JSON
     #[arg(long)]
     json: bool,
@@ -58,6 +63,10 @@ pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
     let stage = stage(global)?;
     let first = stage.night(args.night.as_deref())?;
     some_darkness(&stage, first, args.nights)?;
+    let replay = match &args.weather {
+        Some(path) => Some(Replay::read(path, &stage)?),
+        None => None,
+    };
     let mut ledger = match &args.ledger {
         Some(path) => SqliteLedger::open_exclusive(path),
         None => SqliteLedger::in_memory(),
@@ -69,6 +78,9 @@ pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
     let mut pace = Pace::new(args.nights, args.speed);
     for index in 0..i64::from(args.nights) {
         let date = first.plus_nights(index);
+        if let Some(replay) = &replay {
+            world.recorded = Some(replay.night(date, &pace)?);
+        }
         let summary = one_night(&stage, &mut world, &mut ledger, &mut pace, date)?;
         if !args.json {
             pace.aside(|| output::print(&report(&summary)))?;

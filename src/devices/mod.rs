@@ -6,8 +6,12 @@
 
 mod clock;
 mod http;
+mod push;
 mod weather;
+mod webhook;
 
 pub use clock::SystemClock;
 pub use http::ClientFault;
+pub use push::{PushedVisits, lease_margin_s};
 pub use weather::{LiveFeed, Pacing};
+pub use webhook::Webhook;

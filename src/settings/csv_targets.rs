@@ -128,9 +128,9 @@ pub(super) fn read(file: &str, text: &str, sink: &Sink) -> Vec<Node> {
     rows
 }
 
-/// The line on which a record begins. The reader's own count lags behind where lines end in CRLF,
+/// The line on which a CSV record begins, from its byte position. The reader's own count lags behind where lines end in CRLF,
 /// and its position lies before the blank and comment lines that it has skipped.
-fn line_of(text: &str, position: u64) -> usize {
+pub fn line_of(text: &str, position: u64) -> usize {
     let bytes = text.as_bytes();
     let mut at = usize::try_from(position).unwrap_or(0).min(bytes.len());
     while let Some(byte) = bytes.get(at) {

@@ -38,6 +38,7 @@ mod year;
 
 use std::collections::BTreeMap;
 
+pub use csv_targets::line_of as csv_line_of;
 pub use daemon::{DaemonSettings, Push};
 pub use feed::{
     AlpacaFeed, Feed, FeedSource, JsonFeed, MappedKind, MappedValue, RecordedWeather, TimeFormat,

@@ -7,6 +7,7 @@ mod desk;
 mod drive;
 mod ledger;
 mod observatory;
+mod record;
 mod weather;
 mod world;
 
@@ -16,5 +17,6 @@ pub use desk::{RehearsalError, rehearse_night};
 pub use drive::{NightRun, Planner, SimFault, Unwatched, Watch, run_night};
 pub use ledger::MemoryLedger;
 pub use observatory::{Habits, SimObservatory};
+pub use record::{Record, RecordFault};
 pub use weather::{NightWeather, Recorded, SkyChain};
 pub use world::World;

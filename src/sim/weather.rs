@@ -86,7 +86,8 @@ pub struct Recorded {
 }
 
 impl Recorded {
-    fn at(&self, now: Utc) -> Result<WeatherSample, FeedFault> {
+    /// What the feed gives at an instant of the night: the line that stands then, freshly stamped.
+    pub(super) fn at(&self, now: Utc) -> Result<WeatherSample, FeedFault> {
         let then = now.plus_ms(-self.shift_ms);
         let after = self.samples.partition_point(|sample| sample.at <= then);
         let line = after.checked_sub(1).and_then(|i| self.samples.get(i));

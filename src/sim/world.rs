@@ -19,7 +19,7 @@ pub struct World {
     pub realisation: u32,
     /// The site's weather by month, with the rate of instrument faults.
     pub climate: Climate,
-    /// A record to replay in place of drawn weather.
+    /// A record to replay in place of drawn weather and of drawn outages of its feed.
     pub recorded: Option<Recorded>,
     /// How the observatory carries visits out.
     pub habits: Habits,
@@ -61,16 +61,16 @@ impl World {
             key,
         );
         self.clear_before = Some(clear);
+        if let Some(recorded) = &self.recorded {
+            // Its gaps are the outages of its feed.
+            return weather.replaying(recorded.clone());
+        }
         let feed = stream(key.0, key.1, bounds.night, Purpose::Feed);
-        let weather = weather.with_outages(
+        weather.with_outages(
             self.habits.feed_outages_per_hour,
             self.habits.feed_outage_s,
             feed,
-        );
-        match &self.recorded {
-            Some(recorded) => weather.replaying(recorded.clone()),
-            None => weather,
-        }
+        )
     }
 
     /// Draws when the instrument is broken tonight; a repair may last into the next night.
