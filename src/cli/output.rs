@@ -63,7 +63,54 @@ pub fn write_whole(path: &Path, text: &str) -> Result<(), Trouble> {
     })
 }
 
+/// Columns that a report for people fits into.
+pub const COLUMNS: usize = 100;
+
+/// A text broken into indented lines of at most [`COLUMNS`], each with its line break. A word that
+/// is longer stands alone on its line.
+pub fn wrapped(text: &str, indent: usize) -> String {
+    let mut lines = String::new();
+    let mut used = 0;
+    for word in text.split_whitespace() {
+        let length = word.chars().count();
+        if used > 0 && used + 1 + length <= COLUMNS {
+            lines.push(' ');
+            used += 1 + length;
+            lines.push_str(word);
+            continue;
+        }
+        if used > 0 {
+            lines.push('\n');
+        }
+        lines.extend(std::iter::repeat_n(' ', indent));
+        lines.push_str(word);
+        used = indent + length;
+    }
+    lines.push('\n');
+    lines
+}
+
 /// Prints a text to standard error. When even that fails, nobody is left to be told.
 pub fn complain(text: &str) {
     let _ = writeln!(io::stderr().lock(), "{text}");
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn long_texts_are_broken_between_words() {
+        let text = "star ".repeat(60);
+        let lines = wrapped(&text, 8);
+        assert!(lines.lines().all(|line| line.starts_with("        star")));
+        assert!(lines.lines().all(|line| line.len() <= COLUMNS));
+        assert_eq!(lines.split_whitespace().count(), 60);
+        assert_eq!(wrapped("short", 2), "  short\n");
+        let long = "x".repeat(150);
+        assert_eq!(
+            wrapped(&format!("a {long} b"), 0),
+            format!("a\n{long}\nb\n")
+        );
+    }
 }

@@ -1,13 +1,14 @@
 //! `plan`: the queue of a night, with the reasons.
 
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 use std::time::Instant;
 
-use comfy_table::{CellAlignment, Table, presets};
 use serde_json::json;
 
-use crate::plan::solve::Settings as Search;
-use crate::plan::{Ask, Calendar, Desk, History, Planned, SkyTable};
+use crate::plan::solve as solver;
+use crate::plan::{
+    Ask, Calendar, Desk, History, HourPrice, PlanError, Planned, SkyTable, accrual_first,
+};
 use crate::record::QueueEntry;
 use crate::time::NightDate;
 
@@ -20,7 +21,9 @@ use super::{Exit, Global, Trouble, output};
 #[derive(Debug, clap::Args)]
 #[command(after_help = "Example:
   nightwright plan --night 2026-12-01
-  nightwright plan --night 2026-12-01 --json --out tonight.json")]
+  nightwright plan --night 2026-12-01 --json --out tonight.json
+  nightwright plan --night 2026-12-01 --problem night.json
+  nightwright plan --solve night.json --budget-ms 2000")]
 pub struct Args {
     /// Date of the night's evening at the site (default: tonight)
     #[arg(long, value_name = "DATE")]
@@ -37,6 +40,12 @@ pub struct Args {
     /// Write to a file, whole or not at all, instead of standard output
     #[arg(long, value_name = "FILE")]
     out: Option<PathBuf>,
+    /// Write the night's exact problem to a file, for a solver of your own, instead of planning
+    #[arg(long, value_name = "FILE", conflicts_with_all = ["json", "csv", "out"])]
+    problem: Option<PathBuf>,
+    /// Solve a problem file and print the plan as JSON; no configuration is read
+    #[arg(long, value_name = "FILE", conflicts_with_all = ["night", "ledger", "csv", "problem"])]
+    solve: Option<PathBuf>,
     /// Longest time for the search, milliseconds (default: planning.budget_ms)
     #[arg(long, value_name = "N")]
     budget_ms: Option<u64>,
@@ -45,69 +54,152 @@ pub struct Args {
     budget_steps: Option<u64>,
 }
 
+/// Longest time for a problem file without `--budget-ms`, milliseconds.
+const SOLVE_MS: u64 = 2000;
+
+/// A night at the desk with its plan.
+struct Tonight {
+    night: NightDate,
+    sky: SkyTable,
+    planned: Planned,
+    hours: Vec<HourPrice>,
+    elapsed_ms: u64,
+}
+
 /// Runs the command.
 pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
+    if let Some(file) = &args.solve {
+        put(args, &solved(args, file)?)?;
+        return Ok(Exit::Fine);
+    }
     let stage = stage(global)?;
     let night = stage.night(args.night.as_deref())?;
     stage.mention_earth_rotation(night);
     let visits = stage.visits_before(args.ledger.as_deref(), night)?;
     let begun = Instant::now();
-    let (sky, planned) = tonight(&stage, args, night, &visits)?;
-    let elapsed_ms = begun.elapsed().as_millis() as u64;
-    let text = if args.json {
-        format!("{:#}\n", json_of(night, &planned, elapsed_ms))
-    } else if args.csv {
-        csv_of(&planned.entries)?
-    } else {
-        text_of(&stage, night, &sky, &planned, elapsed_ms)
-    };
-    match &args.out {
-        None => output::print(&text)?,
-        Some(path) => output::write_whole(path, &text)?,
-    }
-    Ok(Exit::Fine)
-}
-
-fn tonight(
-    stage: &Stage,
-    args: &Args,
-    night: NightDate,
-    visits: &[crate::record::Visit],
-) -> Result<(SkyTable, Planned), Trouble> {
     let survey = &stage.settings.survey;
     let observer = &stage.observer;
     let sky = SkyTable::compute(survey, observer, night).map_err(out_of_range)?;
-    let history = History::new(survey, observer, visits).map_err(out_of_range)?;
-    let first = crate::plan::accrual_first(survey, history.first_night(), night);
+    if sky.slots == 0 {
+        return Err(no_darkness(&stage, night));
+    }
+    let history = History::new(survey, observer, &visits).map_err(out_of_range)?;
+    let first = accrual_first(survey, history.first_night(), night);
     let calendar = Calendar::compute(survey, observer, first, night).map_err(out_of_range)?;
     let desk = Desk::new(survey, observer, &calendar, &sky, history);
     let ask = Ask::whole_night(sky.instant(0));
+    if let Some(file) = &args.problem {
+        let problem = desk.problem(&ask).map_err(refused)?.problem;
+        output::write_whole(
+            file,
+            &format!("{}\n", solver::json::write_problem(&problem)),
+        )?;
+        return Ok(Exit::Fine);
+    }
     let budget_ms = args.budget_ms.unwrap_or(survey.planning.budget_ms);
-    let search = Search {
-        seed: survey.planning.seed,
-        steps: args.budget_steps.unwrap_or(u64::MAX),
-        ..Search::default()
+    let search = search(args, survey.planning.seed);
+    let mut going = || (begun.elapsed().as_millis() as u64) < budget_ms;
+    let planned = desk.plan(&ask, &search, &mut going).map_err(refused)?;
+    let hours = desk.hour_prices(&ask, &planned).map_err(refused)?;
+    let elapsed_ms = begun.elapsed().as_millis() as u64;
+    let tonight = Tonight {
+        night,
+        sky,
+        planned,
+        hours,
+        elapsed_ms,
     };
-    let begun = Instant::now();
-    let planned = desk
-        .plan(&ask, &search, &mut || {
-            (begun.elapsed().as_millis() as u64) < budget_ms
-        })
-        .map_err(|error| Trouble::from_error(Exit::Misuse, &error))?;
-    Ok((sky, planned))
+    let text = if args.json {
+        format!("{:#}\n", json_of(&tonight))
+    } else if args.csv {
+        csv_of(&tonight.planned.entries)?
+    } else {
+        text_of(&stage, &tonight)
+    };
+    put(args, &text)?;
+    Ok(Exit::Fine)
 }
 
-fn json_of(night: NightDate, planned: &Planned, elapsed_ms: u64) -> serde_json::Value {
+fn search(args: &Args, seed: u64) -> solver::Settings {
+    solver::Settings {
+        seed,
+        steps: args.budget_steps.unwrap_or(u64::MAX),
+        ..solver::Settings::default()
+    }
+}
+
+fn put(args: &Args, text: &str) -> Result<(), Trouble> {
+    match &args.out {
+        None => output::print(text),
+        Some(path) => output::write_whole(path, text),
+    }
+}
+
+fn refused(error: PlanError) -> Trouble {
+    Trouble::from_error(Exit::Misuse, &error)
+}
+
+fn no_darkness(stage: &Stage, night: NightDate) -> Trouble {
+    let limit = stage.settings.survey.planning.darkness_sun_altitude.deg();
+    Trouble::misuse(format!(
+        "the night {night} has no darkness, so there is nothing to plan"
+    ))
+    .hint(format!(
+        "the sun must go below {limit:.0} degrees (planning.darkness_sun_altitude_deg); \
+             `nightwright sky` shows the night"
+    ))
+}
+
+/// The plan of a problem file, as JSON.
+fn solved(args: &Args, file: &Path) -> Result<String, Trouble> {
+    let shown = file.display();
+    let text = std::fs::read_to_string(file).map_err(|error| {
+        let message = format!("the problem {shown} cannot be read");
+        match error.kind() {
+            std::io::ErrorKind::NotFound | std::io::ErrorKind::InvalidData => {
+                Trouble::misuse(message).because(&error)
+            }
+            _ => Trouble::machine(message).because(&error),
+        }
+    })?;
+    let problem = solver::json::read_problem(&text).map_err(|error| {
+        Trouble::misuse(format!("{shown} cannot be solved"))
+            .because(&error)
+            .hint("`nightwright plan --problem FILE` writes a file of this format")
+    })?;
+    let begun = Instant::now();
+    let budget_ms = args.budget_ms.unwrap_or(match args.budget_steps {
+        Some(_) => u64::MAX,
+        None => SOLVE_MS,
+    });
+    let mut going = || (begun.elapsed().as_millis() as u64) < budget_ms;
+    let solution = solver::solve(&problem, &search(args, 1), None, &mut going)
+        .map_err(|error| Trouble::from_error(Exit::Misuse, &error))?;
+    let elapsed_ms = begun.elapsed().as_millis() as u64;
+    Ok(format!(
+        "{}\n",
+        solver::json::write_solution(&solution, elapsed_ms)
+    ))
+}
+
+fn json_of(tonight: &Tonight) -> serde_json::Value {
+    let planned = &tonight.planned;
     let visits: Vec<VisitView> = planned.entries.iter().map(VisitView::from).collect();
     let left_out: Vec<LeftOutView> = planned.left_out.iter().map(LeftOutView::from).collect();
+    let hours: Vec<serde_json::Value> = tonight
+        .hours
+        .iter()
+        .map(|hour| json!({"start": hour.start.to_string(), "value": round(hour.value, 4)}))
+        .collect();
     json!({
-        "night": night.to_string(),
+        "night": tonight.night.to_string(),
         "planner": {
             "value": round(planned.value, 4),
             "bound": planned.bound.map(|bound| round(bound, 4)),
             "steps": planned.steps,
-            "elapsed_ms": elapsed_ms,
+            "elapsed_ms": tonight.elapsed_ms,
         },
+        "price_by_hour": hours,
         "visits": visits,
         "left_out": left_out,
     })
@@ -126,29 +218,22 @@ fn csv_of(entries: &[QueueEntry]) -> Result<String, Trouble> {
     Ok(String::from_utf8_lossy(&bytes).into_owned())
 }
 
-fn text_of(
-    stage: &Stage,
-    night: NightDate,
-    sky: &SkyTable,
-    planned: &Planned,
-    elapsed_ms: u64,
-) -> String {
+fn text_of(stage: &Stage, tonight: &Tonight) -> String {
+    let (night, planned) = (tonight.night, &tonight.planned);
     let mut text = format!("Night {night}, {}\n", stage.settings.survey.site.name);
-    match sky.darkness {
-        None => text.push_str("No darkness: the sun stays too high all night.\n"),
-        Some(span) => {
-            let hours = span.length_ms() as f64 / 3_600_000.0;
-            text.push_str(&format!(
-                "Dark from {} to {} UTC ({hours:.1} h){}\n",
-                clock(span.start),
-                clock(span.end),
-                if sky.ours { "" } else { ", not ours" }
-            ));
-        }
+    if let Some(span) = tonight.sky.darkness {
+        let hours = span.length_ms() as f64 / 3_600_000.0;
+        text.push_str(&format!(
+            "Dark from {} to {} UTC ({hours:.1} h){}\n",
+            clock(span.start),
+            clock(span.end),
+            if tonight.sky.ours { "" } else { ", not ours" }
+        ));
     }
-    text.push_str(&format!("{}\n", worth(planned, elapsed_ms)));
+    text.push_str(&format!("{}\n", worth(planned, tonight.elapsed_ms)));
     if !planned.entries.is_empty() {
-        text.push_str(&format!("\n{}\n", queue_table(&planned.entries)));
+        text.push_str(&format!("\n{}", queue_lines(&planned.entries)));
+        text.push_str(&format!("\n{}", hour_lines(&tonight.hours)));
     }
     if !planned.left_out.is_empty() {
         text.push_str(&format!(
@@ -156,8 +241,31 @@ fn text_of(
             planned.left_out.len()
         ));
         for left_out in &planned.left_out {
-            text.push_str(&format!("  {:<12} {}\n", left_out.target, left_out.because));
+            let because = output::wrapped(&left_out.because, 15);
+            text.push_str(&format!(
+                "  {:<12} {}",
+                left_out.target,
+                because.trim_start()
+            ));
         }
+    }
+    text
+}
+
+/// What each hour is worth, with a bar against the dearest.
+fn hour_lines(hours: &[HourPrice]) -> String {
+    let dearest = hours.iter().map(|hour| hour.value).fold(0.0, f64::max);
+    let mut text =
+        "Price of telescope time: what the night would lose without the hour\n".to_owned();
+    for hour in hours {
+        let bar = (40.0 * hour.value / dearest.max(f64::MIN_POSITIVE)).round() as usize;
+        let line = format!(
+            " {}  {:>6.2}  {}",
+            clock(hour.start),
+            hour.value,
+            "▪".repeat(bar)
+        );
+        text.push_str(&format!("{}\n", line.trim_end()));
     }
     text
 }
@@ -174,45 +282,33 @@ fn worth(planned: &Planned, elapsed_ms: u64) -> String {
     format!("Worth {:.2}{proof} ({elapsed_ms} ms)", planned.value)
 }
 
-/// The queue as a table; each visit's reason stands under it.
-pub fn queue_table(entries: &[QueueEntry]) -> Table {
-    let mut table = Table::new();
-    table.load_style(presets::NOTHING).set_header([
-        "start",
-        "end",
-        "target",
-        "exposures",
-        "airmass",
-        "alt",
-        "moon",
-        "value",
-        "because",
-    ]);
+/// The queue in lines; each visit's reason stands under it.
+pub fn queue_lines(entries: &[QueueEntry]) -> String {
+    let mut text = format!(
+        " start  end    {:<12} {:<13} {:>7} {:>4} {:>5} {:>6}\n",
+        "target", "exposures", "airmass", "alt°", "moon°", "value"
+    );
     for entry in entries {
         let number = |value: Option<f64>, decimals: usize| {
             value.map_or("–".to_owned(), |v| format!("{v:.decimals$}"))
         };
-        table.add_row([
+        let exposures = format!(
+            "{} × {:.0} s",
+            entry.exposures.count, entry.exposures.seconds
+        );
+        text.push_str(&format!(
+            " {}  {}  {:<12} {exposures:<13} {:>7} {:>4} {:>5} {:>6.2}\n",
             clock(entry.start),
             clock(entry.end),
-            entry.subject.to_string(),
-            format!(
-                "{} × {:.0} s",
-                entry.exposures.count, entry.exposures.seconds
-            ),
+            entry.subject,
             number(entry.airmass, 2),
             number(entry.altitude_deg, 0),
             number(entry.moon_separation_deg, 0),
-            format!("{:.2}", entry.value.total),
-            entry.because.clone(),
-        ]);
+            entry.value.total,
+        ));
+        text.push_str(&output::wrapped(&entry.because, 15));
     }
-    for column in [4, 5, 6, 7] {
-        if let Some(column) = table.column_mut(column) {
-            column.set_cell_alignment(CellAlignment::Right);
-        }
-    }
-    table
+    text
 }
 
 /// Hours and minutes of an instant, UTC.

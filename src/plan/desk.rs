@@ -13,7 +13,9 @@ use crate::time::{NightDate, Span, Utc};
 
 use super::calendar::Calendar;
 use super::solve::{ProblemError, Settings};
-use super::{Ask, Planned, SkyTable, Valuer, plan};
+use super::{
+    Ask, HourPrice, NightProblem, Planned, SkyTable, Valuer, hour_prices, plan, problem_of,
+};
 
 /// A velocity error assumed where a visit has neither a reported nor a predicted one, m/s: as good
 /// as a quiet star gets, so that an old record without errors still fills phases.
@@ -238,9 +240,29 @@ impl<'a> Desk<'a> {
         settings: &Settings,
         keep_going: &mut dyn FnMut() -> bool,
     ) -> Result<Planned, PlanError> {
+        if self.sky.slots == 0 {
+            return Ok(Planned::default());
+        }
         let valuers = self.valuers(ask)?;
         let planned = plan(self.survey, self.sky, ask, &valuers, settings, keep_going)?;
         Ok(planned)
+    }
+
+    /// The exact problem of what is asked for.
+    ///
+    /// # Errors
+    /// [`PlanError`].
+    pub fn problem(&self, ask: &Ask) -> Result<NightProblem, PlanError> {
+        let valuers = self.valuers(ask)?;
+        Ok(problem_of(self.survey, self.sky, ask, &valuers)?)
+    }
+
+    /// What each hour of a plan is worth.
+    ///
+    /// # Errors
+    /// [`PlanError`].
+    pub fn hour_prices(&self, ask: &Ask, planned: &Planned) -> Result<Vec<HourPrice>, PlanError> {
+        Ok(hour_prices(self.sky, &self.problem(ask)?, &planned.prices)?)
     }
 
     /// What values each target in the part of the night that is asked for.

@@ -30,7 +30,8 @@ use crate::catalogue::Survey;
 use crate::record::{LeftOut, QueueEntry};
 
 use self::queue::Reading;
-use self::solve::{ProblemError, Settings, solve};
+use self::solve::{Prices, ProblemError, Settings, solve};
+use crate::time::Utc;
 
 /// A queue with what is known of how good it is.
 #[derive(Clone, Debug, Default, PartialEq)]
@@ -45,6 +46,17 @@ pub struct Planned {
     pub bound: Option<f64>,
     /// Steps that the solver took.
     pub steps: u64,
+    /// What visits cost beyond their time, as the solver found it.
+    pub prices: Prices,
+}
+
+/// What an hour of the night is worth.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct HourPrice {
+    /// Its start; the last one of the night may be shorter than an hour.
+    pub start: Utc,
+    /// Value that the best plan would lose if nothing could be observed in it.
+    pub value: f64,
 }
 
 /// Plans what is left of a night. `keep_going` is asked between steps: the caller holds the clock.
@@ -59,11 +71,7 @@ pub fn plan(
     settings: &Settings,
     keep_going: &mut dyn FnMut() -> bool,
 ) -> Result<Planned, ProblemError> {
-    let offers: Vec<Offers> = valuers
-        .iter()
-        .enumerate()
-        .map(|(star, valuer)| offers(survey, sky, ask, star, valuer))
-        .collect();
+    let offers = offers_of(survey, sky, ask, valuers);
     let night = build(survey, sky, ask, &offers)?;
     let solution = solve(&night.problem, settings, None, keep_going)?;
     let reading = Reading {
@@ -88,5 +96,48 @@ pub fn plan(
         value: science(solution.objective),
         bound: solution.bound.map(science),
         steps: solution.steps,
+        prices: solution.prices,
     })
+}
+
+/// The problem that [`plan`] solves.
+///
+/// # Errors
+/// As [`plan`].
+pub fn problem_of(
+    survey: &Survey,
+    sky: &SkyTable,
+    ask: &Ask,
+    valuers: &[Valuer],
+) -> Result<NightProblem, ProblemError> {
+    build(survey, sky, ask, &offers_of(survey, sky, ask, valuers))
+}
+
+/// What each hour of the night is worth at the prices of a plan.
+///
+/// # Errors
+/// As [`plan`].
+pub fn hour_prices(
+    sky: &SkyTable,
+    night: &NightProblem,
+    prices: &Prices,
+) -> Result<Vec<HourPrice>, ProblemError> {
+    let hours: Vec<std::ops::Range<u32>> = (night.first_slot..sky.slots)
+        .step_by(60)
+        .map(|slot| slot as u32..(slot + 60).min(sky.slots) as u32)
+        .collect();
+    let worth = solve::price_of_time(&night.problem, prices, &hours)?;
+    let told = hours.iter().zip(worth).map(|(hour, worth)| HourPrice {
+        start: sky.instant(hour.start as usize),
+        value: worth / VALUE_UNIT,
+    });
+    Ok(told.collect())
+}
+
+fn offers_of(survey: &Survey, sky: &SkyTable, ask: &Ask, valuers: &[Valuer]) -> Vec<Offers> {
+    valuers
+        .iter()
+        .enumerate()
+        .map(|(star, valuer)| offers(survey, sky, ask, star, valuer))
+        .collect()
 }

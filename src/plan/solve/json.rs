@@ -45,7 +45,7 @@ pub const FORMAT_2: &str = "nightwright-problem/2";
 #[derive(Debug, Error)]
 pub enum ReadError {
     /// Not JSON, or not of this shape.
-    #[error("not a planning problem: {0}")]
+    #[error("not a planning problem")]
     Shape(#[from] serde_json::Error),
     /// Another format.
     #[error("the format is \"{0}\", give \"{FORMAT_1}\" or \"{FORMAT_2}\"")]

@@ -32,6 +32,26 @@ use tables::{Tables, UNIT};
 /// half of the time for each, so that a short budget gives both a plan and a proof.
 const SEARCH_PER_BOUND: u64 = 8;
 
+/// What spans of slots are worth: what the bound at these prices would lose if nothing could be done
+/// in them. Values, 0 or more.
+///
+/// # Errors
+/// A fault of the problem.
+pub fn price_of_time(
+    problem: &Problem,
+    prices: &Prices,
+    spans: &[std::ops::Range<u32>],
+) -> Result<Vec<f64>, ProblemError> {
+    let tables = Tables::new(problem)?;
+    let multipliers = Multipliers::from_prices(&tables, prices);
+    let mut relaxation = Relaxation::new(&tables, multipliers);
+    let whole = relaxation.value_without(&(0..0));
+    Ok(spans
+        .iter()
+        .map(|span| (whole - relaxation.value_without(span)).max(0) as f64 / UNIT as f64)
+        .collect())
+}
+
 /// How long and how to search.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Settings {

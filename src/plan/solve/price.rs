@@ -251,6 +251,18 @@ impl<'t> Relaxation<'t> {
         &self.path
     }
 
+    /// Value of the relaxed problem at the prices of now without the visits that touch a span of
+    /// slots, prices' constant left out, in [`UNIT`]s.
+    pub(super) fn value_without(&mut self, span: &std::ops::Range<u32>) -> i64 {
+        self.reprice();
+        for (start, priced) in self.priced.iter_mut().enumerate() {
+            if self.t.slot[start] < span.end && self.t.end[start] > span.start {
+                *priced = -(self.t.penalty * UNIT);
+            }
+        }
+        self.longest.solve(self.t, &self.priced, &mut self.path)
+    }
+
     /// Nothing is left to gain: the steps have become too short.
     pub(super) fn settled(&self) -> bool {
         self.length < 0.004
