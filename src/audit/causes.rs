@@ -23,13 +23,15 @@ pub enum OwedCause {
     Operator,
     /// Lost for a reason that was not told.
     Other,
+    /// The ledger has no record of the night: the night keeper did not run.
+    Unrecorded,
     /// Accrued since its last visit, whose interval is not over: nothing is wrong.
     NotDue,
 }
 
 impl OwedCause {
     /// All causes.
-    pub const ALL: [OwedCause; 8] = [
+    pub const ALL: [OwedCause; 9] = [
         OwedCause::Weather,
         OwedCause::Instrument,
         OwedCause::Outbid,
@@ -37,6 +39,7 @@ impl OwedCause {
         OwedCause::Moon,
         OwedCause::Operator,
         OwedCause::Other,
+        OwedCause::Unrecorded,
         OwedCause::NotDue,
     ];
 
@@ -50,6 +53,7 @@ impl OwedCause {
             OwedCause::Moon => "moon",
             OwedCause::Operator => "operator",
             OwedCause::Other => "other",
+            OwedCause::Unrecorded => "unrecorded",
             OwedCause::NotDue => "not_due",
         }
     }
@@ -81,6 +85,8 @@ impl From<LossCause> for OwedCause {
 pub struct NightFacts {
     /// The night.
     pub night: NightDate,
+    /// The ledger knows how the night went. Without, minutes and plan below are of no account.
+    pub recorded: bool,
     /// The night adds to what the cadence wants: it was ours and the star stood within its limits
     /// at some time of darkness.
     pub accrues: bool,
@@ -98,6 +104,8 @@ pub struct NightFacts {
     pub paused: bool,
     /// Some revision of the night's plan had it.
     pub planned: bool,
+    /// The last revision had a visit that nobody began.
+    pub unclaimed: bool,
     /// Causes of the visits that were begun and lost or stopped early, one entry each.
     pub losses: Vec<LossCause>,
     /// Visits refused or never reported.
@@ -109,6 +117,9 @@ pub struct NightFacts {
 pub struct OwedByCause {
     /// Every cause that has a part, visits.
     pub by_cause: BTreeMap<OwedCause, f64>,
+    /// Nights on which the star was due, could have been observed and still was owed visits when
+    /// the night was over, each with its weightiest cause, in order.
+    pub unserved: Vec<(NightDate, OwedCause)>,
 }
 
 impl OwedByCause {
@@ -138,14 +149,16 @@ pub fn attribute_owed(
     let visits_per_night = f64::from(cadence.visits_per_night);
     let accrual = visits_per_night / cadence.every_nights;
     let mut account = Account::default();
+    let mut owed = OwedByCause::default();
     for facts in nights {
         let accrued = if facts.accrues { accrual } else { 0.0 };
-        account.pass_night(facts, accrued, visits_per_night);
+        if let Some(cause) = account.pass_night(facts, accrued, visits_per_night) {
+            owed.unserved.push((facts.night, cause));
+        }
     }
     if let Some(missing) = missing {
         account.drop_newest_beyond(missing.max(0.0));
     }
-    let mut owed = OwedByCause::default();
     for (cause, amount) in account.debts {
         *owed.by_cause.entry(cause).or_insert(0.0) += amount;
     }
@@ -160,7 +173,13 @@ struct Account {
 }
 
 impl Account {
-    fn pass_night(&mut self, facts: &NightFacts, accrued: f64, visits_per_night: f64) {
+    /// Takes a night in; the weightiest cause when the star was due and is owed visits after it.
+    fn pass_night(
+        &mut self,
+        facts: &NightFacts,
+        accrued: f64,
+        visits_per_night: f64,
+    ) -> Option<OwedCause> {
         let mut credit = self.ahead + facts.credit;
         let own = (accrued - credit).max(0.0);
         credit -= accrued - own;
@@ -171,9 +190,13 @@ impl Account {
         }
         // Only a night that could have brought a visit explains why none came.
         let due = self.total() + NOTHING >= visits_per_night;
-        if due && facts.accrues {
-            self.explain(&causes_of(facts));
+        if !(due && facts.accrues) {
+            return None;
         }
+        let causes = causes_of(facts);
+        self.explain(&causes);
+        let weightiest = causes.into_iter().max_by(|a, b| a.1.total_cmp(&b.1));
+        weightiest.map(|(cause, _)| cause)
     }
 
     fn total(&self) -> f64 {
@@ -219,9 +242,10 @@ impl Account {
 }
 
 /// Why a due star got too little on a night, as shares that add to 1. The first that applies:
-/// paused; a visit begun and lost, or unanswered; too short a time within limits; too short a time
+/// paused; a visit begun and lost, or unanswered; a night that was not recorded; too short a time within limits; too short a time
 /// left by the moon; too short a time left by holds, or planned and overtaken by them, by the
-/// minutes of each; planned and never claimed; outbid.
+/// minutes of each; in the last plan and never begun; outbid (never planned, or dropped from a later
+/// plan while nothing was held).
 fn causes_of(facts: &NightFacts) -> Vec<(OwedCause, f64)> {
     if facts.paused {
         return vec![(OwedCause::Operator, 1.0)];
@@ -239,6 +263,9 @@ fn causes_of(facts: &NightFacts) -> Vec<(OwedCause, f64)> {
         }
         return causes;
     }
+    if !facts.recorded {
+        return vec![(OwedCause::Unrecorded, 1.0)];
+    }
     if facts.observable_min < facts.needed_min {
         return vec![(OwedCause::Geometry, 1.0)];
     }
@@ -251,7 +278,7 @@ fn causes_of(facts: &NightFacts) -> Vec<(OwedCause, f64)> {
         let share = |(cause, minutes): (&HoldCause, &f64)| ((*cause).into(), minutes / held_min);
         return facts.held_min.iter().map(share).collect();
     }
-    if facts.planned {
+    if facts.unclaimed {
         return vec![(OwedCause::Instrument, 1.0)];
     }
     vec![(OwedCause::Outbid, 1.0)]
@@ -267,6 +294,7 @@ mod tests {
     fn clear(number: i64) -> NightFacts {
         NightFacts {
             night: night(number),
+            recorded: true,
             accrues: true,
             credit: 0.0,
             observable_min: 300.0,
@@ -275,6 +303,7 @@ mod tests {
             needed_min: 30.0,
             paused: false,
             planned: false,
+            unclaimed: false,
             losses: Vec::new(),
             unanswered: 0,
         }
@@ -401,9 +430,25 @@ mod tests {
             (
                 NightFacts {
                     planned: true,
+                    unclaimed: true,
                     ..clear(0)
                 },
                 vec![(OwedCause::Instrument, 1.0)],
+            ),
+            // Planned in the evening, and given up for a better one.
+            (
+                NightFacts {
+                    planned: true,
+                    ..clear(0)
+                },
+                vec![(OwedCause::Outbid, 1.0)],
+            ),
+            (
+                NightFacts {
+                    recorded: false,
+                    ..clear(0)
+                },
+                vec![(OwedCause::Unrecorded, 1.0)],
             ),
         ];
         for (facts, expected) in cases {

@@ -1,6 +1,7 @@
 //! Floor 2: whether each star gets what its planets demand. Statistics alone: the faces choose what
 //! to show of them.
 
+mod account;
 mod causes;
 mod gaps;
 mod mass;
@@ -10,8 +11,10 @@ mod programmes;
 mod sampling;
 mod sensitivity;
 mod star;
+mod survey;
 mod velocity;
 
+pub use account::{Accounts, NightAccount};
 pub use causes::{NightFacts, OwedByCause, OwedCause, attribute_owed};
 pub use gaps::{GapStatistics, quantile};
 pub use mass::{
@@ -24,4 +27,5 @@ pub use programmes::{ProgrammeUse, programme_use};
 pub use sampling::{Alias, Peak, SpectralWindow, aliases, natural_name, window_power};
 pub use sensitivity::{Sensitivity, log_spaced_periods, sensitivity};
 pub use star::{CandidateAudit, DETECTION_SNR, StarAudit, StarRecord};
+pub use survey::{MonthUse, Record, SurveyAudit};
 pub use velocity::{ErrorPair, NightErrors, VelocityErrors, VelocityRange};

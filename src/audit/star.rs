@@ -2,8 +2,10 @@
 
 use super::{
     Alias, GapStatistics, MassError, Measurement, OrbitErrors, Peak, PhaseCoverage, Sensitivity,
-    SpectralWindow, VelocityRange, aliases, log_spaced_periods, msini_error, sensitivity,
+    SpectralWindow, VelocityErrors, VelocityRange, aliases, earth_irradiation_period_d,
+    log_spaced_periods, msini_error, sensitivity,
 };
+use super::{ErrorPair, NightFacts, OwedByCause, attribute_owed};
 use crate::catalogue::{Candidate, Programme, Target};
 use crate::score::{Standing, overdue, owed};
 use crate::time::Utc;
@@ -30,6 +32,12 @@ pub struct StarRecord<'a> {
     pub programme: &'a Programme,
     /// Its credited visits and the nights that accrued.
     pub standing: &'a Standing,
+    /// Its nights, for the causes of what is owed.
+    pub nights: &'a [NightFacts],
+    /// Velocity errors of its visits, where both are known.
+    pub error_pairs: &'a [ErrorPair],
+    /// Error that no light removes, m/s, of the instrument.
+    pub floor_m_s: f64,
     /// Barycentric velocity correction at each credited visit, km/s.
     pub barycentric_km_s: &'a [f64],
     /// The end of the time audited.
@@ -47,6 +55,8 @@ pub struct StarAudit {
     pub wanted: f64,
     /// Visits owed.
     pub owed: f64,
+    /// The same by cause: the parts add up to it.
+    pub owed_by_cause: OwedByCause,
     /// Wanted intervals since the last visit.
     pub overdue: f64,
     /// Gaps between visits.
@@ -57,12 +67,19 @@ pub struct StarAudit {
     pub candidates: Vec<CandidateAudit>,
     /// Smallest planets over the periods of the programme.
     pub sensitivity: Vec<Sensitivity>,
+    /// Period at which a planet gets as much light as the Earth, days, where mass and radius of the
+    /// star are known.
+    pub earth_irradiation_period_d: Option<f64>,
+    /// Smallest planet at that period.
+    pub at_earth_irradiation: Option<Sensitivity>,
     /// The sampling's spectral window.
     pub window: Option<SpectralWindow>,
     /// Its strongest peaks.
     pub peaks: Vec<Peak>,
     /// Barycentric velocity over the visits.
     pub barycentric: Option<VelocityRange>,
+    /// Velocity errors, predicted beside reported.
+    pub errors: Option<VelocityErrors>,
 }
 
 /// What the visits of one star amount to for one of its candidates.
@@ -74,6 +91,9 @@ pub struct CandidateAudit {
     pub coverage: PhaseCoverage,
     /// Errors of the orbit; `None` where the visits do not determine it.
     pub errors: Option<OrbitErrors>,
+    /// Error of K in m/s with the star's jitter and the instrument's floor added to each visit's own
+    /// error in quadrature.
+    pub sigma_k_with_jitter_m_s: Option<f64>,
     /// Error of the minimum mass; `None` too where the star's mass is not given.
     pub mass: Option<MassError>,
     /// Periods that this sampling cannot tell from it.
@@ -103,37 +123,49 @@ impl StarAudit {
         );
         let mass = target.mass_msun.map(|mass| mass.value);
         let last = standing.credited.last().map(|visit| visit.mid);
+        let owed = owed(target, standing);
+        let irradiated = earth_irradiation_period_d(target);
+        let noise_m_s = target.jitter_m_s.hypot(record.floor_m_s);
+        let with_jitter: Vec<Measurement> = measurements
+            .iter()
+            .map(|m| Measurement {
+                rv_error_m_s: m.rv_error_m_s.hypot(noise_m_s),
+                ..*m
+            })
+            .collect();
+        let candidate = |candidate: &Candidate| CandidateAudit {
+            aliases: aliases(candidate.period_d.value, &peaks, resolution),
+            sigma_k_with_jitter_m_s: OrbitErrors::of(candidate, &with_jitter)
+                .map(|errors| errors.sigma_k_m_s),
+            ..CandidateAudit::of(target, candidate, &measurements)
+        };
         StarAudit {
             visits: standing.credited.len(),
             credited: standing.credited.iter().map(|visit| visit.credit).sum(),
             wanted: wanted(target, standing),
-            owed: owed(target, standing),
+            owed,
+            owed_by_cause: owed_by_cause(record, owed),
             overdue: overdue(target, standing, record.now),
             gaps: GapStatistics::of(&times_d),
             waiting_d: last.map(|last| (record.now - last) as f64 / DAY_MS),
-            candidates: target
-                .candidates
-                .iter()
-                .map(|candidate| {
-                    let found = aliases(candidate.period_d.value, &peaks, resolution);
-                    CandidateAudit::of(target, candidate, &measurements, found)
-                })
-                .collect(),
+            candidates: target.candidates.iter().map(candidate).collect(),
             sensitivity: sensitivity(&measurements, &periods, DETECTION_SNR, mass),
+            earth_irradiation_period_d: irradiated,
+            at_earth_irradiation: irradiated.and_then(|period| {
+                let found = sensitivity(&measurements, &[period], DETECTION_SNR, mass);
+                found.into_iter().next()
+            }),
+            barycentric: VelocityRange::of(record.barycentric_km_s),
+            errors: VelocityErrors::of(record.error_pairs),
             window,
             peaks,
-            barycentric: VelocityRange::of(record.barycentric_km_s),
         }
     }
 }
 
 impl CandidateAudit {
-    fn of(
-        target: &Target,
-        candidate: &Candidate,
-        measurements: &[Measurement],
-        aliases: Vec<Alias>,
-    ) -> Self {
+    /// By the visits' own errors; aliases and noise of the star are left to the caller.
+    fn of(target: &Target, candidate: &Candidate, measurements: &[Measurement]) -> Self {
         let times_d: Vec<f64> = measurements.iter().map(|m| m.bjd_tdb).collect();
         let errors = OrbitErrors::of(candidate, measurements);
         CandidateAudit {
@@ -143,9 +175,28 @@ impl CandidateAudit {
                 .as_ref()
                 .and_then(|errors| msini_error(target, candidate, errors.sigma_k_m_s)),
             errors,
-            aliases,
+            sigma_k_with_jitter_m_s: None,
+            aliases: Vec::new(),
         }
     }
+}
+
+/// The debt by cause, scaled to what is owed: the two sums differ by rounding alone.
+fn owed_by_cause(record: &StarRecord<'_>, owed: f64) -> OwedByCause {
+    let cadence = &record.target.cadence;
+    let credited: f64 = record.standing.credited.iter().map(|v| v.credit).sum();
+    let missing = cadence
+        .total_visits
+        .map(|total| f64::from(total) - credited);
+    let mut by_cause = attribute_owed(cadence, record.nights, missing);
+    let total = by_cause.total();
+    if total > 0.0 {
+        for part in by_cause.by_cause.values_mut() {
+            *part *= owed / total;
+        }
+    }
+    by_cause.by_cause.retain(|_, part| *part > 0.0);
+    by_cause
 }
 
 /// Visits that the cadence has asked for, at most the wanted total.
@@ -196,6 +247,9 @@ mod tests {
             target: &star,
             programme: &survey.programmes[0],
             standing,
+            nights: &[],
+            error_pairs: &[],
+            floor_m_s: 0.0,
             barycentric_km_s: velocities,
             now: Utc::from_unix_ms(1_796_169_600_000 + 40 * 86_400_000),
         })

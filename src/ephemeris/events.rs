@@ -11,6 +11,7 @@ use super::earth_rotation::RotationQuality;
 use super::frame::{altitude, azimuth};
 use super::observer::Observer;
 use super::place::{illuminated_fraction, moon_semidiameter};
+use super::scales::Tt;
 use super::site::HorizonProfile;
 use super::star::StarMotion;
 use super::track::{SkyTrack, StarTrack};
@@ -191,6 +192,14 @@ impl NightSky {
             (altitude(frame.moon_horizontal()) + HORIZON_REFRACTION + semidiameter).rad()
         })
         .above()
+    }
+
+    /// Barycentric velocity correction of a star in m/s at an instant of the night, as
+    /// [`super::SkyInstant::barycentric_correction_m_s`]: many visits of one night share its sky.
+    pub fn barycentric_correction_m_s(&self, star: &StarMotion, utc: Utc) -> f64 {
+        let years = Tt::from_utc(utc).0.julian_years();
+        let frame = self.track.frame(utc);
+        frame.velocity_correction_m_s(star.seen_from(years, frame.position_au))
     }
 
     /// A star's transit and its passages through an altitude (without refraction).

@@ -76,11 +76,25 @@ impl NightGrid {
         stars: &[Star],
         span: Span,
     ) -> Result<Self, EphemerisError> {
+        NightGrid::compute_every(observer, stars, span, MINUTE_MS)
+    }
+
+    /// As [`NightGrid::compute`], at the span's start and every `step_ms` (at least 1) after it.
+    ///
+    /// # Errors
+    /// [`EphemerisError::OutOfRange`] outside the years 1900 to 2100.
+    pub fn compute_every(
+        observer: &Observer,
+        stars: &[Star],
+        span: Span,
+        step_ms: i64,
+    ) -> Result<Self, EphemerisError> {
         let track = SkyTrack::over(observer, span)?;
-        let count = span.length_ms().div_euclid(MINUTE_MS)
-            + i64::from(span.length_ms().rem_euclid(MINUTE_MS) > 0);
+        let step_ms = step_ms.max(1);
+        let count = span.length_ms().div_euclid(step_ms)
+            + i64::from(span.length_ms().rem_euclid(step_ms) > 0);
         let moments: Vec<Moment> = (0..count)
-            .map(|minute| Moment::new(span.start.plus_ms(minute * MINUTE_MS), &track.ground))
+            .map(|step| Moment::new(span.start.plus_ms(step * step_ms), &track.ground))
             .collect();
         let mut columns = Columns::with_capacity(moments.len());
         let mut grid = NightGrid {

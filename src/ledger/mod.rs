@@ -10,6 +10,7 @@
 //! [`SqliteLedger::open_exclusive`] for the one run that keeps the nights, and
 //! [`SqliteLedger::open_read_only`] to ask, which never makes a file.
 
+mod accounts;
 mod check;
 mod copy;
 mod error;

@@ -226,6 +226,21 @@ impl SqliteLedger {
         Ok(found.first().copied())
     }
 
+    /// The last night that the record knows, opened or with a visit.
+    ///
+    /// # Errors
+    /// [`LedgerFault::Unreadable`] or [`LedgerFault::Damaged`].
+    pub fn last_night(&self) -> Result<Option<NightDate>, LedgerFault> {
+        let found = self.collect(
+            "SELECT night FROM (SELECT max(night) AS night FROM nights
+                                UNION ALL SELECT max(night) FROM visits)
+             WHERE night IS NOT NULL ORDER BY night DESC LIMIT 1",
+            [],
+            night_of,
+        )?;
+        Ok(found.first().copied())
+    }
+
     /// The nights from `first` to `last`, both included, in order; each as it was opened last, with
     /// its last summary.
     ///

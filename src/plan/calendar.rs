@@ -118,16 +118,27 @@ impl Calendar {
         tonight: NightDate,
     ) {
         let (index, target) = target;
-        let cadence = &target.cadence;
-        let from = cadence
-            .first_night
-            .map_or(accrual_first, |own| own.max(accrual_first));
-        let until = cadence
-            .last_night
-            .map_or(tonight, |last| tonight.min(last.plus_nights(1)));
+        let (from, until) = accrual_span(target, accrual_first, tonight);
         standing.accrued_nights = self.observable_nights(index, from, until);
-        standing.remaining_nights = self.remaining(index, tonight, cadence.last_night);
+        standing.remaining_nights = self.remaining(index, tonight, target.cadence.last_night);
     }
+}
+
+/// The nights `from ≤ night < until` that count for a target's cadence, for an accrual from
+/// `accrual_first` and a night `tonight` that is left out.
+pub fn accrual_span(
+    target: &Target,
+    accrual_first: NightDate,
+    tonight: NightDate,
+) -> (NightDate, NightDate) {
+    let cadence = &target.cadence;
+    let from = cadence
+        .first_night
+        .map_or(accrual_first, |own| own.max(accrual_first));
+    let until = cadence
+        .last_night
+        .map_or(tonight, |last| tonight.min(last.plus_nights(1)));
+    (from, until)
 }
 
 fn ms_needed(survey: &Survey, target: &Target) -> i64 {

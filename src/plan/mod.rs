@@ -13,16 +13,18 @@ mod explain;
 mod limits;
 mod offer;
 mod queue;
+mod reach;
 mod sky_table;
 mod slew;
 pub mod solve;
 
 pub use ask::{Ask, Published, Urgent};
 pub use build::{CALIBRATION_VALUE, Meaning, NightProblem, VALUE_UNIT, build};
-pub use calendar::{Calendar, SEASON_GAP_NIGHTS};
+pub use calendar::{Calendar, SEASON_GAP_NIGHTS, accrual_span};
 pub use desk::{Desk, History, PlanError, accrual_first};
 pub use limits::{Limit, Limits, Wind};
 pub use offer::{Narrowed, Offer, Offers, Valuer, offers};
+pub use reach::Reach;
 pub use sky_table::SkyTable;
 pub use slew::{Pointing, setup_s};
 

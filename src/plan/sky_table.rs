@@ -219,18 +219,11 @@ fn star_night(survey: &Survey, grid: &NightGrid, index: usize, slots: usize) -> 
     // The sun moves a degree a day: one look at it serves the night.
     let sun_separation_deg = grid.sun_separation_deg(index, slots / 2).unwrap_or(180.0);
     for slot in 0..slots {
-        let view = View {
-            pointing: Pointing {
-                altitude_deg: course.altitude_deg[slot],
-                azimuth_deg: course.azimuth_deg[slot],
-                hour_angle_deg: grid.hour_angle_deg(index, slot).unwrap_or(0.0),
-                declination_deg: star.declination_deg,
-            },
-            airmass: course.airmass[slot],
-            moon_separation_deg: course.moon_separation_deg[slot],
-            moon_altitude_deg: grid.moon_altitude_deg[slot],
-            sun_separation_deg,
-        };
+        let view = view(
+            grid,
+            (index, slot),
+            (star.declination_deg, sun_separation_deg),
+        );
         let sky_mag = sky.with_moon(&MoonGeometry {
             phase_angle: Angle::from_deg(grid.moon_phase_angle_deg[slot]),
             moon_altitude: Angle::from_deg(view.moon_altitude_deg),
@@ -256,8 +249,30 @@ fn star_night(survey: &Survey, grid: &NightGrid, index: usize, slots: usize) -> 
     star
 }
 
+/// What a star offers at an instant of the grid, (star, instant), with what changes little in a
+/// night: its declination of date and its distance to the sun, degrees.
+pub(super) fn view(
+    grid: &NightGrid,
+    (index, slot): (usize, usize),
+    (declination_deg, sun_separation_deg): (f64, f64),
+) -> View {
+    let course = &grid.stars()[index];
+    View {
+        pointing: Pointing {
+            altitude_deg: course.altitude_deg[slot],
+            azimuth_deg: course.azimuth_deg[slot],
+            hour_angle_deg: grid.hour_angle_deg(index, slot).unwrap_or(0.0),
+            declination_deg,
+        },
+        airmass: course.airmass[slot],
+        moon_separation_deg: course.moon_separation_deg[slot],
+        moon_altitude_deg: grid.moon_altitude_deg[slot],
+        sun_separation_deg,
+    }
+}
+
 /// Declination of date from a place in the horizon frame (spherical triangle pole–zenith–star).
-fn declination_deg(survey: &Survey, course: &StarCourse, slot: usize) -> f64 {
+pub(super) fn declination_deg(survey: &Survey, course: &StarCourse, slot: usize) -> f64 {
     let (Some(altitude), Some(azimuth)) =
         (course.altitude_deg.get(slot), course.azimuth_deg.get(slot))
     else {
