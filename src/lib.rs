@@ -8,7 +8,7 @@
 //! | 7 | [`cli`] |
 //! | 6 | `daemon`, [`season`] |
 //! | 5 | [`ledger`], [`devices`], [`sim`] |
-//! | 4 | [`ports`] |
+//! | 4 | [`ports`], [`report`] |
 //! | 3 | [`night`], [`settings`] |
 //! | 2 | [`score`], [`plan`], [`audit`] |
 //! | 1 | [`ephemeris`], [`catalogue`], [`weather`], [`record`], [`page`] |
@@ -30,6 +30,7 @@ pub mod page;
 pub mod plan;
 pub mod ports;
 pub mod record;
+pub mod report;
 pub mod score;
 pub mod season;
 pub mod settings;

@@ -21,6 +21,7 @@ const FLOORS: &[(&str, u8)] = &[
     ("night", 3),
     ("settings", 3),
     ("ports", 4),
+    ("report", 4),
     ("ledger", 5),
     ("devices", 5),
     ("sim", 5),

@@ -6,11 +6,12 @@ use serde_json::{Value, json};
 
 use crate::ephemeris::darkness;
 use crate::ledger::SqliteLedger;
-use crate::night::NightRules;
+use crate::night::{NightReport, NightRules};
 use crate::plan::solve::Settings as Search;
 use crate::plan::{Calendar, Desk, History, SkyTable};
 use crate::ports::Ledger;
 use crate::record::NightSummary;
+use crate::report::{Heading, text};
 use crate::sim::{RehearsalError, World, rehearse_night};
 use crate::time::{Night, NightDate};
 
@@ -83,7 +84,9 @@ pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
         }
         let summary = one_night(&stage, &mut world, &mut ledger, &mut pace, date)?;
         if !args.json {
-            pace.aside(|| output::print(&report(&summary)))?;
+            let gap = if index > 0 { "\n" } else { "" };
+            let told = told(&stage, &ledger, date)?;
+            pace.aside(|| output::print(&format!("{gap}{told}")))?;
         }
         summaries.push(json_of(&summary));
     }
@@ -172,24 +175,14 @@ fn json_of(summary: &NightSummary) -> Value {
     })
 }
 
-fn report(summary: &NightSummary) -> String {
-    let darkness_ms = summary.darkness.map_or(0, |span| span.length_ms());
-    let mut text = format!(
-        "Night {}: {:.2} h of darkness\n",
-        summary.night,
-        darkness_ms as f64 / 3_600_000.0
-    );
-    for (label, ms) in summary.split.parts().into_iter().filter(|(_, ms)| *ms > 0) {
-        let share = 100.0 * ms as f64 / darkness_ms.max(1) as f64;
-        text.push_str(&format!(
-            "  {label:<24} {:>8.1} min {share:>5.1} %\n",
-            ms as f64 / 60_000.0
-        ));
-    }
-    let v = &summary.visits;
-    text.push_str(&format!(
-        "  visits: {} done, {} short, {} lost, {} refused, {} unreported\n",
-        v.done, v.short, v.lost, v.refused, v.unreported
-    ));
-    text
+/// The night's report, as the daemon writes it.
+fn told(stage: &Stage, ledger: &SqliteLedger, date: NightDate) -> Result<String, Trouble> {
+    let survey = &stage.settings.survey;
+    let facts = ledger.facts(date)?;
+    let heading = Heading {
+        survey: &survey.name,
+        site: &survey.site.name,
+    };
+    let report = NightReport::from_facts(&facts, &survey.allocation.blocked);
+    Ok(report.map_or_else(String::new, |report| text(&report, &heading)))
 }

@@ -5,12 +5,14 @@
 //! Nothing here protects people, dome or optics: the interlocks of the observatory do.
 
 mod clock;
+mod folder;
 mod http;
 mod push;
 mod weather;
 mod webhook;
 
 pub use clock::SystemClock;
+pub use folder::{write_report, write_whole};
 pub use http::ClientFault;
 pub use push::{PushedVisits, lease_margin_s};
 pub use weather::{LiveFeed, Pacing};

@@ -20,6 +20,7 @@ pub mod import;
 mod labels;
 mod open;
 mod read;
+mod reports;
 mod rows;
 mod votable;
 mod write;
@@ -42,7 +43,7 @@ use crate::ports::LedgerFault;
 use error::{Doing, fault};
 
 /// The newest layout of the file that this program knows: the number of its last migration.
-pub const LAYOUT: i64 = 1;
+pub const LAYOUT: i64 = 2;
 
 /// Says in the file's header that it is a ledger of this program ("NWLG").
 const APPLICATION_ID: i64 = 0x4E57_4C47;

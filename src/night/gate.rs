@@ -25,7 +25,7 @@ pub enum FeedFault {
     #[error("the weather feed's answer is malformed: {0}")]
     Malformed(String),
     /// A number that cannot be.
-    #[error("the weather feed gives {quantity:?} = {value}, which cannot be")]
+    #[error("the weather feed gives {} = {value}, which cannot be", quantity.label())]
     Nonsense {
         /// Of what.
         quantity: Quantity,
@@ -312,7 +312,7 @@ impl Gate {
 }
 
 fn describe(rule: &WeatherRule, value: Option<&f64>, waiting: bool) -> String {
-    let name = format!("{:?}", rule.quantity);
+    let name = rule.quantity.label();
     match value {
         None => format!("{name} is missing"),
         Some(value) if waiting => {

@@ -28,6 +28,23 @@ pub enum Quantity {
     SeeingArcsec,
 }
 
+impl Quantity {
+    /// The label in settings, files and messages.
+    pub const fn label(self) -> &'static str {
+        match self {
+            Quantity::RainMmH => "rain_mm_h",
+            Quantity::HumidityPercent => "humidity_percent",
+            Quantity::DewPointSpreadK => "dew_point_spread_k",
+            Quantity::WindMS => "wind_m_s",
+            Quantity::GustMS => "gust_m_s",
+            Quantity::CloudPercent => "cloud_percent",
+            Quantity::SkyMinusAirK => "sky_minus_air_k",
+            Quantity::SkyBrightnessMag => "sky_brightness_mag",
+            Quantity::SeeingArcsec => "seeing_arcsec",
+        }
+    }
+}
+
 /// One reading of the weather.
 #[derive(Clone, Debug, PartialEq)]
 pub struct WeatherSample {
