@@ -95,24 +95,30 @@ impl<'a> Column<'a> {
 /// A table that scrolls within its own box where the page is too narrow. The first cell of a row is
 /// its heading; a row with fewer cells than columns leaves the rest empty.
 pub fn table(caption: &str, columns: &[Column<'_>], rows: &[Vec<Markup>]) -> Markup {
-    let class = |index: usize| columns.get(index).is_some_and(|c| c.numeric);
+    let class = |index: usize| {
+        let numeric = columns.get(index).is_some_and(|c| c.numeric);
+        numeric.then_some("number")
+    };
     html! {
-        div class="scroll" tabindex="0" {
-            table {
-                caption { (caption) }
-                thead { tr {
-                    @for column in columns {
-                        th scope="col" class=[column.numeric.then_some("number")] { (column.heading) }
-                    }
-                } }
-                tbody {
-                    @for row in rows {
-                        tr {
-                            @for (index, cell) in row.iter().enumerate() {
-                                @if index == 0 {
-                                    th scope="row" class=[class(0).then_some("number")] { (cell) }
-                                } @else {
-                                    td class=[class(index).then_some("number")] { (cell) }
+        div class="tabled" {
+            // Not a caption of HTML: that would be as wide as the table, and scroll away with it.
+            p class="caption" { (caption) }
+            div class="scroll" tabindex="0" {
+                table aria-label=(caption) {
+                    thead { tr {
+                        @for (index, column) in columns.iter().enumerate() {
+                            th scope="col" class=[class(index)] { (column.heading) }
+                        }
+                    } }
+                    tbody {
+                        @for row in rows {
+                            tr {
+                                @for (index, cell) in row.iter().enumerate() {
+                                    @if index == 0 {
+                                        th scope="row" class=[class(0)] { (cell) }
+                                    } @else {
+                                        td class=[class(index)] { (cell) }
+                                    }
                                 }
                             }
                         }

@@ -68,8 +68,9 @@ impl Field {
     pub(super) const fn fits_keywords(self) -> &'static [&'static str] {
         match self {
             Field::Target => &["OBJECT"],
-            Field::Ra => &["RA", "OBJRA", "CRVAL1"],
-            Field::Dec => &["DEC", "OBJDEC", "CRVAL2"],
+            // No CRVALn: in a spectrum these are wavelengths and orders.
+            Field::Ra => &["RA", "OBJRA"],
+            Field::Dec => &["DEC", "OBJDEC"],
             Field::UtcMid => &["DATE-AVG"],
             Field::UtcStart => &["DATE-BEG", "DATE-OBS"],
             Field::TimeStart => &["TIME-OBS", "UTC", "UT", "UTSTART"],

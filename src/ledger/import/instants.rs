@@ -26,10 +26,13 @@ pub(super) fn record(
     let number = |field: Field| -> Result<Option<f64>, String> {
         text(field).map(|text| positive(field, &text)).transpose()
     };
-    let subject = Subject {
-        name: text(Field::Target).unwrap_or_default(),
-        place: place(text(Field::Ra), text(Field::Dec))?,
+    let name = text(Field::Target).unwrap_or_default();
+    let place = match place(text(Field::Ra), text(Field::Dec)) {
+        // A name is enough: what stands for the place need not be one then.
+        Err(_) if !name.is_empty() => None,
+        place => place?,
     };
+    let subject = Subject { name, place };
     if subject.name.is_empty() && subject.place.is_none() {
         return Err("it names no target and gives no place".to_owned());
     }
