@@ -36,6 +36,8 @@ pub struct StarRecord<'a> {
     pub nights: &'a [NightFacts],
     /// Velocity errors of its visits, where both are known.
     pub error_pairs: &'a [ErrorPair],
+    /// Spread of the barycentric velocity that is wanted, km/s.
+    pub wanted_spread_km_s: f64,
     /// Error that no light removes, m/s, of the instrument.
     pub floor_m_s: f64,
     /// Barycentric velocity correction at each credited visit, km/s.
@@ -78,6 +80,8 @@ pub struct StarAudit {
     pub peaks: Vec<Peak>,
     /// Barycentric velocity over the visits.
     pub barycentric: Option<VelocityRange>,
+    /// Its spread as a share of the wanted one, at most 1; 0 without visits.
+    pub spread_share: f64,
     /// Velocity errors, predicted beside reported.
     pub errors: Option<VelocityErrors>,
 }
@@ -124,6 +128,7 @@ impl StarAudit {
         let mass = target.mass_msun.map(|mass| mass.value);
         let last = standing.credited.last().map(|visit| visit.mid);
         let owed = owed(target, standing);
+        let barycentric = VelocityRange::of(record.barycentric_km_s);
         let irradiated = earth_irradiation_period_d(target);
         let noise_m_s = target.jitter_m_s.hypot(record.floor_m_s);
         let with_jitter: Vec<Measurement> = measurements
@@ -155,7 +160,9 @@ impl StarAudit {
                 let found = sensitivity(&measurements, &[period], DETECTION_SNR, mass);
                 found.into_iter().next()
             }),
-            barycentric: VelocityRange::of(record.barycentric_km_s),
+            barycentric,
+            spread_share: barycentric
+                .map_or(0.0, |range| range.share_of(record.wanted_spread_km_s)),
             errors: VelocityErrors::of(record.error_pairs),
             window,
             peaks,
@@ -249,6 +256,7 @@ mod tests {
             standing,
             nights: &[],
             error_pairs: &[],
+            wanted_spread_km_s: 17.0,
             floor_m_s: 0.0,
             barycentric_km_s: velocities,
             now: Utc::from_unix_ms(1_796_169_600_000 + 40 * 86_400_000),
@@ -264,6 +272,7 @@ mod tests {
         assert_eq!(audit.gaps.map(|gaps| gaps.longest_d), Some(1.0));
         assert_eq!(audit.waiting_d, Some(11.0));
         assert_eq!(audit.barycentric.map(|b| b.spread_km_s()), Some(8.5));
+        assert_eq!(audit.spread_share, 0.5);
         assert_eq!(audit.peaks[0].name.as_deref(), Some("solar day"));
         let candidate = &audit.candidates[0];
         let sigma = candidate.errors.as_ref().map(|e| e.sigma_k_m_s).unwrap();

@@ -101,6 +101,7 @@ impl SurveyAudit {
                     standing: &standings[*star],
                     nights: &accounts.facts(*star),
                     error_pairs: &pairs[*star],
+                    wanted_spread_km_s: survey.planning.barycentric_spread_km_s,
                     floor_m_s: survey.instrument.velocity.floor_m_s,
                     barycentric_km_s: velocities,
                     now,

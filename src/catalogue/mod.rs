@@ -70,6 +70,9 @@ pub struct Planning {
     pub share_pull: f64,
     /// Worth of each further visit to a star in the same night, relative to the first.
     pub repeat_worth: f64,
+    /// Spread of the barycentric velocity wanted of a star's visits, km/s, so that the lines of star
+    /// and air separate.
+    pub barycentric_spread_km_s: f64,
     /// Typical zenith seeing (full width at half maximum) in arcseconds at the instrument's band.
     pub typical_seeing_arcsec: f64,
     /// Longest wall time in milliseconds that a plan may take.

@@ -151,6 +151,7 @@ pub fn survey() -> Survey {
             season_boost: 1.0,
             share_pull: 1.0,
             repeat_worth: 0.5,
+            barycentric_spread_km_s: 20.0,
             typical_seeing_arcsec: 1.5,
             budget_ms: 1000,
             seed: 1,

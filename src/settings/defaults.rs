@@ -23,6 +23,9 @@ pub const SEASON_BOOST: f64 = 0.5;
 pub const SHARE_PULL: f64 = 1.0;
 /// A second visit in one night tells less of an orbit of many days than the first.
 pub const REPEAT_WORTH: f64 = 0.6;
+/// Moves a stellar line across several resolution elements of a precise spectrograph (3 km/s each at
+/// a resolving power of 100,000), so that the lines of the air fall elsewhere in it.
+pub const BARYCENTRIC_SPREAD_KM_S: f64 = 20.0;
 /// Long enough to prove a plan, short enough to wait for.
 pub const BUDGET_MS: u64 = 800;
 /// Any number does; a fixed one makes two runs agree.

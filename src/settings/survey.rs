@@ -107,6 +107,7 @@ fn planning(section: Option<Section<'_>>) -> Planning {
         season_boost: defaults::SEASON_BOOST,
         share_pull: defaults::SHARE_PULL,
         repeat_worth: defaults::REPEAT_WORTH,
+        barycentric_spread_km_s: defaults::BARYCENTRIC_SPREAD_KM_S,
         typical_seeing_arcsec: 1.2,
         budget_ms: defaults::BUDGET_MS,
         seed: defaults::SEED,
@@ -133,6 +134,11 @@ fn planning(section: Option<Section<'_>>) -> Planning {
             Range::of(0.0, 10.0, ""),
         ),
         ("repeat_worth", &mut planning.repeat_worth, SHARE),
+        (
+            "barycentric_spread_km_s",
+            &mut planning.barycentric_spread_km_s,
+            Range::above(0.0, 60.0, "km/s"),
+        ),
         (
             "typical_seeing_arcsec",
             &mut planning.typical_seeing_arcsec,

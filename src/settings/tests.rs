@@ -232,6 +232,7 @@ fn documented_defaults_are_the_ones_taken() {
             "season_boost",
             "share_pull",
             "repeat_worth",
+            "barycentric_spread_km_s",
             "typical_seeing_arcsec",
             "budget_ms",
             "seed",

@@ -33,10 +33,11 @@ pub fn of(target: &Target, star: &StarAudit, audit: &SurveyAudit) -> String {
     }
     if let Some(range) = &star.barycentric {
         text.push_str(&format!(
-            "\nBarycentric velocity from {:.2} to {:.2} km/s: a spread of {:.2} km/s\n",
+            "\nBarycentric velocity from {:.2} to {:.2} km/s: a spread of {:.2} km/s, {:.0} % of the wanted\n",
             range.min_km_s,
             range.max_km_s,
-            range.spread_km_s()
+            range.spread_km_s(),
+            100.0 * star.spread_share
         ));
     }
     if let Some(errors) = &star.errors {

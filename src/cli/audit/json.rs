@@ -64,6 +64,7 @@ fn star_json((target, programme): (&str, &str), audit: &StarAudit) -> Value {
             "min": audit.barycentric.map(|b| round(b.min_km_s, 5)),
             "max": audit.barycentric.map(|b| round(b.max_km_s, 5)),
             "spread": audit.barycentric.map(|b| round(b.spread_km_s(), 5)),
+            "share_of_wanted": round(audit.spread_share, 4),
         },
         "velocity_errors": errors_json(audit.errors.as_ref()),
     })

@@ -226,7 +226,8 @@ fn barycentre(star: &StarAudit, standing: &Standing, velocities: &[f64]) -> Opti
     };
     let caption = html! {
         "Barycentric velocity: a spread of " (format!("{:.1}", range.spread_km_s()))
-        " km/s moves the star's lines across those of the air."
+        " km/s, " (format!("{:.0}", 100.0 * star.spread_share))
+        " % of what is wanted to move the star's lines across those of the air."
     };
     Some(figure(&caption, &plot.svg(&x, &y, &[], &marks)))
 }
