@@ -68,6 +68,11 @@ impl Replay {
         })
     }
 
+    /// The record itself.
+    pub fn record(&self) -> &Record {
+        &self.record
+    }
+
     /// What the file has for a night. Weather of another year is announced.
     ///
     /// # Errors
