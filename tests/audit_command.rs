@@ -240,3 +240,39 @@ fn nights_without_a_record_are_called_so() {
     let output = audit(&ledger, &["--until", "2026-12-08", "--html", &file(&page)]);
     assert!(output.status.success(), "{}", said(&output));
 }
+
+/// A visit on each of 64 even phases of a circular orbit: σ(K) = σ √(2/N) with zero point, amplitude
+/// and phase free (the information matrix is then diagonal, N/σ² and twice N/2σ²).
+#[test]
+fn even_phases_give_the_textbook_error_of_k() {
+    let folder = tempfile::tempdir().expect("a scratch folder");
+    let ledger = folder.path().join("even.sqlite");
+    let csv = folder.path().join("even.csv");
+    let (visits, sigma_m_s, period_d) = (64, 1.7, 6.39953);
+    let mut lines = "target,mjd_mid,exposure_s,rv_error_m_s\n".to_owned();
+    for number in 0..visits {
+        // 5 periods and a 64th from each to the next.
+        let mjd = 61_375.1 + f64::from(number) * period_d * (5.0 + 1.0 / f64::from(visits));
+        lines.push_str(&format!("KR0512-21,{mjd:.6},300,{sigma_m_s}\n"));
+    }
+    std::fs::write(&csv, lines).expect("a file");
+    let file = |path: &Path| path.to_str().expect("a path in UTF-8").to_owned();
+    let output = nightwright(&["log", "import", &file(&csv), "--ledger", &file(&ledger)]);
+    assert!(output.status.success(), "{}", said(&output));
+    let output = audit(&ledger, &["--target", "KR0512-21", "--json"]);
+    let told: Value = serde_json::from_slice(&output.stdout).expect("it prints JSON");
+    let star = &told["targets"][0];
+    let candidate = &star["candidates"][0];
+    let period = candidate["period_days"].as_f64().expect("a period");
+    assert!((period - period_d).abs() < 1e-3, "{period}");
+    let expected = sigma_m_s * (2.0 / f64::from(visits)).sqrt();
+    let found = candidate["sigma_k_m_s"].as_f64().expect("an error");
+    // The light time to the barycentre, up to 8 minutes of 6 days, makes the phases a little uneven.
+    assert!((found / expected - 1.0).abs() < 0.01, "{found} {expected}");
+    let with_jitter = candidate["sigma_k_with_jitter_m_s"].as_f64();
+    assert!(with_jitter.expect("an error") > found);
+    assert!(candidate["largest_phase_gap"].as_f64().expect("a gap") < 0.03);
+    // 5 + 1/64 periods from visit to visit, and nothing else.
+    let gap = star["gaps_days"]["longest"].as_f64().expect("a gap");
+    assert!((gap - 5.015625 * period_d).abs() < 0.02, "{gap}");
+}

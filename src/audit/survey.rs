@@ -11,7 +11,7 @@ use super::{
 };
 use crate::catalogue::{Survey, TargetId};
 use crate::ephemeris::{EphemerisError, NightSky, Observer, StarMotion};
-use crate::plan::{Calendar, History, accrual_first};
+use crate::plan::{Calendar, Credits, accrual_first};
 use crate::record::{DarknessSplit, EntryKind, Visit};
 use crate::score::Standing;
 use crate::time::{Night, NightDate};
@@ -75,12 +75,15 @@ impl SurveyAudit {
         stars: &[usize],
     ) -> Result<Self, EphemerisError> {
         let next = record.until.plus_nights(1);
-        let history = History::new(survey, observer, &record.visits)?;
+        let mut credits = Credits::none(survey);
+        for visit in &record.visits {
+            credits.add(survey, observer, visit)?;
+        }
         let earliest = accrual_first(survey, first_night(record), next);
         let first = record.since.map_or(earliest, |since| since.max(earliest));
         let first = first.min(next);
         let calendar = Calendar::compute(survey, observer, first, next)?;
-        let mut standings = history.standings(survey, &calendar, first, next);
+        let mut standings = credits.standings(survey, &calendar, first, next);
         let accounts = Accounts::new(
             (survey, observer),
             &calendar,
@@ -112,7 +115,7 @@ impl SurveyAudit {
             let target = &survey.targets[star];
             (target.programme, crate::score::owed(target, standing))
         });
-        let used = history.used_s().iter().copied().enumerate();
+        let used = credits.used_s().iter().copied().enumerate();
         let programmes = programme_use(&survey.programmes, used, owed);
         Ok(SurveyAudit {
             first,

@@ -1,5 +1,7 @@
 //! On which nights each star can be observed at all, as far as geometry and allocation say.
 
+use rayon::prelude::*;
+
 use crate::catalogue::{Survey, Target};
 use crate::ephemeris::{EphemerisError, Observer, Visibility};
 use crate::score::{Photometer, Standing};
@@ -42,7 +44,7 @@ impl Calendar {
         let nights = Visibility::over(observer, first, count as usize, darkness_altitude)?;
         let observable = survey
             .targets
-            .iter()
+            .par_iter()
             .map(|target| {
                 let needed_ms = ms_needed(survey, target);
                 let own = target.limits.min_altitude;

@@ -1,36 +1,28 @@
 //! Where a night's plans are made: the survey, the sky and what has been credited, put together
 //! once a night and asked as often as the night changes.
 
-use std::collections::BTreeMap;
-
 use thiserror::Error;
 
 use crate::catalogue::Survey;
-use crate::ephemeris::{EphemerisError, Observer, SkyInstant, StarMotion};
-use crate::record::{EntryKind, Visit};
+use crate::ephemeris::{EphemerisError, Observer};
+use crate::record::Visit;
 use crate::score::{Coverage, CreditedVisit, Photometer, Scorer, Standing, Tonight, share_factors};
 use crate::time::{NightDate, Span, Utc};
 
 use super::calendar::Calendar;
+use super::credits::Credits;
 use super::solve::{ProblemError, Settings};
 use super::{
     Ask, HourPrice, NightProblem, Planned, SkyTable, Valuer, hour_prices, plan, problem_of,
 };
 
-/// A velocity error assumed where a visit has neither a reported nor a predicted one, m/s: as good
-/// as a quiet star gets, so that an old record without errors still fills phases.
-const UNKNOWN_RV_ERROR_M_S: f64 = 3.0;
-
 /// The survey's visits so far, as far as scoring needs them: kept up to date visit by visit, so that
 /// a long history is read once.
 #[derive(Clone, Debug)]
 pub struct History {
-    standings: Vec<Standing>,
+    credits: Credits,
     coverages: Vec<Coverage>,
     photometers: Vec<Photometer>,
-    used_s: Vec<f64>,
-    first_night: Option<NightDate>,
-    by_id: BTreeMap<String, usize>,
 }
 
 impl History {
@@ -44,26 +36,11 @@ impl History {
         observer: &Observer,
         visits: &[Visit],
     ) -> Result<Self, EphemerisError> {
+        let targets = || survey.targets.iter();
         let mut history = History {
-            standings: vec![Standing::default(); survey.targets.len()],
-            coverages: survey
-                .targets
-                .iter()
-                .map(|t| Coverage::new(survey, t))
-                .collect(),
-            photometers: survey
-                .targets
-                .iter()
-                .map(|t| Photometer::new(survey, t))
-                .collect(),
-            used_s: vec![0.0; survey.programmes.len()],
-            first_night: None,
-            by_id: survey
-                .targets
-                .iter()
-                .enumerate()
-                .map(|(index, target)| (target.id.as_str().to_owned(), index))
-                .collect(),
+            credits: Credits::none(survey),
+            coverages: targets().map(|t| Coverage::new(survey, t)).collect(),
+            photometers: targets().map(|t| Photometer::new(survey, t)).collect(),
         };
         for visit in visits {
             history.add(survey, observer, visit)?;
@@ -81,38 +58,25 @@ impl History {
         observer: &Observer,
         visit: &Visit,
     ) -> Result<(), EphemerisError> {
-        self.first_night = Some(self.first_night.map_or(visit.night, |f| f.min(visit.night)));
-        if visit.kind != EntryKind::Science || visit.credit <= 0.0 {
-            return Ok(());
+        if let Some((star, credited)) = self.credits.add(survey, observer, visit)? {
+            self.coverages[star].add_visit(credited.mid_bjd_tdb, credited.rv_error_m_s);
         }
-        let Some(&star) = self.by_id.get(visit.subject.as_str()) else {
-            return Ok(());
-        };
-        let credited = credited(survey, observer, star, visit)?;
-        let used_s = visit.exposing.length_ms() as f64 / 1000.0;
-        if let Some(used) = self.used_s.get_mut(survey.targets[star].programme) {
-            *used += used_s;
-        }
-        self.coverages[star].add_visit(credited.mid_bjd_tdb, credited.rv_error_m_s);
-        let list = &mut self.standings[star].credited;
-        let at = list.partition_point(|other| other.mid <= credited.mid);
-        list.insert(at, credited);
         Ok(())
     }
 
     /// Credited visits of a target, by its index in the survey.
     pub fn credited(&self, star: usize) -> &[CreditedVisit] {
-        &self.standings[star].credited
+        self.credits.credited(star)
     }
 
     /// Open time used by each programme so far, seconds.
     pub fn used_s(&self) -> &[f64] {
-        &self.used_s
+        self.credits.used_s()
     }
 
     /// The night of the earliest visit.
     pub fn first_night(&self) -> Option<NightDate> {
-        self.first_night
+        self.credits.first_night()
     }
 
     /// Each target's standing at the start of `tonight`, with debts accrued from `accrual_first`.
@@ -123,39 +87,9 @@ impl History {
         accrual_first: NightDate,
         tonight: NightDate,
     ) -> Vec<Standing> {
-        let mut standings = self.standings.clone();
-        for (index, standing) in standings.iter_mut().enumerate() {
-            let target = &survey.targets[index];
-            calendar.complete(standing, (index, target), accrual_first, tonight);
-        }
-        standings
+        self.credits
+            .standings(survey, calendar, accrual_first, tonight)
     }
-}
-
-fn credited(
-    survey: &Survey,
-    observer: &Observer,
-    star: usize,
-    visit: &Visit,
-) -> Result<CreditedVisit, EphemerisError> {
-    let mid = visit.exposing.start.plus_ms(visit.exposing.length_ms() / 2);
-    let error = visit.rv_error_m_s.or(visit.predicted_rv_error_m_s);
-    let mid_bjd_tdb = match visit.mid_bjd_tdb {
-        Some(known) => known,
-        None => {
-            let motion = StarMotion::of(&survey.targets[star].star);
-            SkyInstant::at(observer, mid)?.bjd_tdb(&motion).single()
-        }
-    };
-    Ok(CreditedVisit {
-        night: visit.night,
-        mid,
-        mid_bjd_tdb,
-        rv_error_m_s: error
-            .filter(|error| *error > 0.0)
-            .unwrap_or(UNKNOWN_RV_ERROR_M_S),
-        credit: visit.credit,
-    })
 }
 
 /// First night from which debts accrue: the survey's, else the ledger's first, else tonight.

@@ -1,7 +1,7 @@
 //! When each star could have been observed in a night that is over: the planner's own limits on a
 //! coarse grid, for many nights.
 
-use crate::catalogue::Survey;
+use crate::catalogue::{Mount, Survey};
 use crate::ephemeris::{EphemerisError, NightGrid, Observer};
 use crate::time::{Span, Utc};
 
@@ -67,7 +67,13 @@ fn limits_of(survey: &Survey, grid: &NightGrid, star: usize) -> Vec<Limits> {
             if grid.stars()[star].altitude_deg[instant] < lowest_deg {
                 return Limits::NONE.with(Limit::Altitude);
             }
-            let view = view(grid, (star, instant), (declination, sun_deg));
+            // Only some mounts ask for it, and it costs more than all the rest.
+            let hour_angle_deg = match survey.telescope.mount {
+                Mount::AltAzimuth { .. } => 0.0,
+                Mount::Equatorial { .. } => grid.hour_angle_deg(star, instant).unwrap_or(0.0),
+            };
+            let place = (star, instant);
+            let view = view(grid, place, hour_angle_deg, (declination, sun_deg));
             broken(&survey.telescope, &survey.site.horizon, target, &view)
         })
         .collect()

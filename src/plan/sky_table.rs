@@ -219,11 +219,9 @@ fn star_night(survey: &Survey, grid: &NightGrid, index: usize, slots: usize) -> 
     // The sun moves a degree a day: one look at it serves the night.
     let sun_separation_deg = grid.sun_separation_deg(index, slots / 2).unwrap_or(180.0);
     for slot in 0..slots {
-        let view = view(
-            grid,
-            (index, slot),
-            (star.declination_deg, sun_separation_deg),
-        );
+        let hour_angle_deg = grid.hour_angle_deg(index, slot).unwrap_or(0.0);
+        let slow = (star.declination_deg, sun_separation_deg);
+        let view = view(grid, (index, slot), hour_angle_deg, slow);
         let sky_mag = sky.with_moon(&MoonGeometry {
             phase_angle: Angle::from_deg(grid.moon_phase_angle_deg[slot]),
             moon_altitude: Angle::from_deg(view.moon_altitude_deg),
@@ -254,6 +252,7 @@ fn star_night(survey: &Survey, grid: &NightGrid, index: usize, slots: usize) -> 
 pub(super) fn view(
     grid: &NightGrid,
     (index, slot): (usize, usize),
+    hour_angle_deg: f64,
     (declination_deg, sun_separation_deg): (f64, f64),
 ) -> View {
     let course = &grid.stars()[index];
@@ -261,7 +260,7 @@ pub(super) fn view(
         pointing: Pointing {
             altitude_deg: course.altitude_deg[slot],
             azimuth_deg: course.azimuth_deg[slot],
-            hour_angle_deg: grid.hour_angle_deg(index, slot).unwrap_or(0.0),
+            hour_angle_deg,
             declination_deg,
         },
         airmass: course.airmass[slot],

@@ -2,7 +2,7 @@
 
 use comfy_table::Table;
 
-use super::text::{drift, lines, number, table, words};
+use super::text::{drift, lines, nights, number, table, words};
 use crate::audit::{CandidateAudit, DETECTION_SNR, StarAudit, SurveyAudit};
 use crate::catalogue::Target;
 
@@ -11,10 +11,7 @@ const PERIODS_TOLD: usize = 12;
 
 /// Everything of one star.
 pub fn of(target: &Target, star: &StarAudit, audit: &SurveyAudit) -> String {
-    let mut text = format!(
-        "{}, nights {} to {}\n\n",
-        target.id, audit.first, audit.until
-    );
+    let mut text = format!("{}. {}\n\n", target.id, nights(audit));
     text.push_str(&cadence(star));
     for candidate in &star.candidates {
         text.push_str(&format!("\n{}", one_candidate(candidate)));

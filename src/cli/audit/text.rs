@@ -13,10 +13,7 @@ const HOUR_MS: f64 = 3_600_000.0;
 
 /// Everything.
 pub fn of(survey: &Survey, audit: &SurveyAudit) -> String {
-    let mut text = format!(
-        "Nights {} to {}, {} of them recorded\n\n",
-        audit.first, audit.until, audit.recorded_nights
-    );
+    let mut text = format!("{}\n\n", nights(audit));
     text.push_str(&lines(&stars(survey, audit)));
     text.push_str(
         "\noverdue: wanted intervals since the last visit · gap: median and longest, days\n\
@@ -32,6 +29,20 @@ pub fn of(survey: &Survey, audit: &SurveyAudit) -> String {
         text.push_str(&format!("\n{}\n", drift(errors)));
     }
     text
+}
+
+/// Which nights the audit is of.
+pub fn nights(audit: &SurveyAudit) -> String {
+    if audit.first > audit.until {
+        return format!(
+            "No night up to {} counts: the record begins later",
+            audit.until
+        );
+    }
+    format!(
+        "Nights {} to {}, {} of them recorded",
+        audit.first, audit.until, audit.recorded_nights
+    )
 }
 
 /// A table's lines without blanks at their ends.

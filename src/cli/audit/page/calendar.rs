@@ -58,8 +58,8 @@ pub fn of(star: &StarAudit, standing: &Standing) -> Option<Markup> {
                     &format!("{year:04}-{number:02}"),
                 ))
             }
-            @for (night, mark) in &marks {
-                (cell(*night, *mark, month(*night) - origin))
+            @for run in runs(&marks) {
+                (cell(&run, month(run.first) - origin))
             }
         }
     })
@@ -75,21 +75,58 @@ fn x(day: u32) -> f64 {
     LEFT + f64::from(day - 1) * CELL
 }
 
-fn cell(night: NightDate, mark: Mark, row: i64) -> Markup {
-    let corner = (x(night.date().day()) + 0.6, TOP + row as f64 * CELL + 0.6);
-    let size = (CELL - 1.2, CELL - 1.2);
-    let (fill, meaning) = match mark {
+/// Nights of one month in a row with the same mark.
+struct Run {
+    first: NightDate,
+    nights: u32,
+    mark: Mark,
+}
+
+/// Nights told together where they are alike: three years of a star are then a few dozen shapes.
+fn runs(marks: &BTreeMap<NightDate, Mark>) -> Vec<Run> {
+    let mut runs: Vec<Run> = Vec::new();
+    for (night, mark) in marks {
+        match runs.last_mut() {
+            Some(run)
+                if run.mark == *mark
+                    && matches!(mark, Mark::Unserved(_))
+                    && month(run.first) == month(*night)
+                    && night.nights_since(run.first) == i64::from(run.nights) =>
+            {
+                run.nights += 1;
+            }
+            _ => runs.push(Run {
+                first: *night,
+                nights: 1,
+                mark: *mark,
+            }),
+        }
+    }
+    runs
+}
+
+fn cell(run: &Run, row: i64) -> Markup {
+    let corner = (
+        x(run.first.date().day()) + 0.6,
+        TOP + row as f64 * CELL + 0.6,
+    );
+    let size = (f64::from(run.nights) * CELL - 1.2, CELL - 1.2);
+    let (fill, meaning) = match run.mark {
         Mark::Visits(1) => (Fill::Plain, "1 visit".to_owned()),
         Mark::Visits(n) => (Fill::Plain, format!("{n} visits")),
         Mark::Unserved(cause) => (fill_of(cause), format!("due, none: {}", words(cause))),
     };
-    let count = match mark {
+    let count = match run.mark {
         Mark::Visits(n) if n > 1 => Some(n),
         _ => None,
     };
     html! {
         g {
-            title { (night) ": " (meaning) }
+            title {
+                (run.first)
+                @if run.nights > 1 { " and " (run.nights - 1) " more" }
+                ": " (meaning)
+            }
             (hatch(fill, corner, size))
             @if let Some(count) = count {
                 (svg_text(

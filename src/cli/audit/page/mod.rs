@@ -9,6 +9,7 @@ use maud::{Markup, html};
 
 use crate::audit::{OwedCause, SurveyAudit};
 use crate::catalogue::Survey;
+use crate::cli::audit::text::nights;
 use crate::page::{self, Fill};
 
 /// Up to so many stars, each one's pictures are open from the start.
@@ -25,8 +26,7 @@ fn body(survey: &Survey, audit: &SurveyAudit) -> Markup {
     html! {
         h1 { (survey.name) ": audit" }
         p class="soft" {
-            "Nights " (audit.first) " to " (audit.until) ", " (audit.recorded_nights)
-            " of them recorded, at " (survey.site.name) "."
+            (nights(audit)) ". " (survey.site.name) "."
         }
         (overview::of(survey, audit))
         h2 { "Star by star" }
