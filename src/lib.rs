@@ -6,7 +6,7 @@
 //! | floor | folders |
 //! | --- | --- |
 //! | 7 | [`cli`] |
-//! | 6 | `daemon`, [`season`] |
+//! | 6 | [`daemon`], [`season`] |
 //! | 5 | [`ledger`], [`devices`], [`sim`] |
 //! | 4 | [`ports`], [`report`] |
 //! | 3 | [`night`], [`settings`] |
@@ -22,6 +22,7 @@
 pub mod audit;
 pub mod catalogue;
 pub mod cli;
+pub mod daemon;
 pub mod devices;
 pub mod ephemeris;
 pub mod ledger;

@@ -22,13 +22,14 @@ pub mod output;
 mod pace;
 mod plan;
 mod rehearse;
+mod remote;
 mod replay;
+mod run;
 mod season;
 mod sky;
 mod stage;
 pub mod storage;
 mod trouble;
-mod views;
 
 use std::path::PathBuf;
 use std::process::ExitCode;
@@ -85,8 +86,11 @@ enum Command {
     Log(log::Args),
     Plan(plan::Args),
     Rehearse(rehearse::Args),
+    Run(run::Args),
     Season(season::Args),
     Sky(sky::Args),
+    Status(remote::StatusArgs),
+    Tell(remote::TellArgs),
 }
 
 fn dispatch(command: &Command, global: &Global) -> Result<Exit, Trouble> {
@@ -98,8 +102,11 @@ fn dispatch(command: &Command, global: &Global) -> Result<Exit, Trouble> {
         Command::Log(args) => log::run(args, global),
         Command::Plan(args) => plan::run(args, global),
         Command::Rehearse(args) => rehearse::run(args, global),
+        Command::Run(args) => run::run(args, global),
         Command::Season(args) => season::run(args, global),
         Command::Sky(args) => sky::run(args, global),
+        Command::Status(args) => remote::status(args, global),
+        Command::Tell(args) => remote::tell(args, global),
     }
 }
 

@@ -13,8 +13,8 @@ use crate::record::QueueEntry;
 use crate::time::NightDate;
 
 use super::stage::{Stage, out_of_range, stage};
-use super::views::{CSV_HEADER, LeftOutView, VisitView, csv_row, round};
 use super::{Exit, Global, Trouble, output};
+use crate::page::queue::{CSV_HEADER, LeftOutView, VisitView, csv_row, round};
 
 /// Print the queue of a night: which star when and for how long, why, and why the others are not in
 /// it.

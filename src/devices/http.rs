@@ -27,7 +27,7 @@ pub struct ClientFault {
 ///
 /// # Errors
 /// [`ClientFault`].
-pub(super) fn client(url: &str, timeout: Duration) -> Result<Client, ClientFault> {
+pub fn client(url: &str, timeout: Duration) -> Result<Client, ClientFault> {
     // The first caller installs it; where another part of the program did, theirs is as good.
     let _ = rustls::crypto::ring::default_provider().install_default();
     let builder = Client::builder()
@@ -48,7 +48,7 @@ pub(super) fn client(url: &str, timeout: Duration) -> Result<Client, ClientFault
 }
 
 /// An error with its causes on one line.
-pub(super) fn chain(error: &dyn Error) -> String {
+pub fn chain(error: &dyn Error) -> String {
     let mut text = error.to_string();
     let mut next = error.source();
     while let Some(cause) = next {

@@ -13,7 +13,7 @@ mod webhook;
 
 pub use clock::SystemClock;
 pub use folder::{write_report, write_whole};
-pub use http::ClientFault;
+pub use http::{ClientFault, chain, client};
 pub use push::{PushedVisits, lease_margin_s};
 pub use weather::{LiveFeed, Pacing};
 pub use webhook::Webhook;

@@ -241,6 +241,15 @@ impl SqliteLedger {
         Ok(found.first().copied())
     }
 
+    /// The last night that was opened; visits added by hand do not open one.
+    ///
+    /// # Errors
+    /// [`LedgerFault::Unreadable`] or [`LedgerFault::Damaged`].
+    pub fn last_opened_night(&self) -> Result<Option<NightDate>, LedgerFault> {
+        let sql = "SELECT night FROM nights ORDER BY night DESC LIMIT 1";
+        Ok(self.collect(sql, [], night_of)?.first().copied())
+    }
+
     /// The nights from `first` to `last`, both included, in order; each as it was opened last, with
     /// its last summary.
     ///

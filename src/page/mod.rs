@@ -12,6 +12,7 @@
 
 mod mark;
 mod plot;
+pub mod queue;
 mod scale;
 
 use maud::{DOCTYPE, Markup, PreEscaped, html};

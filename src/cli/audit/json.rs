@@ -7,7 +7,7 @@ use crate::audit::{
     Sensitivity, StarAudit, SurveyAudit, VelocityErrors,
 };
 use crate::catalogue::Survey;
-use crate::cli::views::round;
+use crate::page::queue::round;
 
 /// Decimals of visits.
 const VISITS: i32 = 4;

@@ -2,7 +2,7 @@
 
 use serde_json::{Map, Value, json};
 
-use crate::cli::views::round;
+use crate::page::queue::round;
 use crate::season::{
     Difference, Estimate, Frame, FrameTarget, SeasonResults, TargetDifference, TargetResult,
 };
