@@ -25,4 +25,4 @@ mod token;
 pub use clock::InventedClock;
 pub use keeper::{Answer, Message};
 pub use shell::{DaemonError, Options, Weather, run};
-pub use token::Token;
+pub use token::{Token, TokenError};
