@@ -190,6 +190,19 @@ fn a_span_of_nights_csv_and_the_page_tell_the_same() {
         &["--html", page.to_str().expect("a path in UTF-8")],
     );
     assert!(output.status.success(), "{}", said(&output));
+    #[cfg(unix)]
+    {
+        use std::os::unix::fs::PermissionsExt;
+        let mode = std::fs::metadata(&page)
+            .expect("it is there")
+            .permissions()
+            .mode();
+        let plain = std::fs::metadata(&ledger)
+            .expect("it is there")
+            .permissions()
+            .mode();
+        assert_eq!(mode, plain, "as any file that is written under this mask");
+    }
     let page = std::fs::read_to_string(&page).expect("the page is there");
     for outside in ["http:", "https:", "<script", " style=", "NaN", "inf\""] {
         assert!(!page.contains(outside), "{outside}");

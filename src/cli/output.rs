@@ -52,7 +52,12 @@ pub fn write_whole(path: &Path, text: &str) -> Result<(), Trouble> {
         _ => Path::new("."),
     };
     let write = || -> io::Result<()> {
-        let mut file = tempfile::Builder::new().tempfile_in(folder)?;
+        let mut builder = tempfile::Builder::new();
+        // Pages and queues are for others to read, as far as the user's mask lets them; a scratch
+        // file is not by itself.
+        #[cfg(unix)]
+        builder.permissions(std::os::unix::fs::PermissionsExt::from_mode(0o666));
+        let mut file = builder.tempfile_in(folder)?;
         file.write_all(text.as_bytes())?;
         file.as_file().sync_all()?;
         file.persist(path)?;
