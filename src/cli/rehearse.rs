@@ -72,8 +72,7 @@ pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
         Some(path) => SqliteLedger::open_exclusive(path),
         None => SqliteLedger::in_memory(),
     }?;
-    let mut rules = NightRules::new(stage.settings.weather.clone());
-    rules.blocked = stage.settings.survey.allocation.blocked.clone();
+    let rules = NightRules::for_survey(stage.settings.weather.clone(), &stage.settings.survey);
     let mut world = World::new(args.seed, 0, stage.settings.climate.clone(), rules);
     let mut summaries = Vec::new();
     let mut pace = Pace::new(args.nights, args.speed);

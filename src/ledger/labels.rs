@@ -116,6 +116,7 @@ pub(super) fn plan_cause(value: &PlanCause) -> (&'static str, Option<&str>) {
         PlanCause::HoldEnded => ("hold_ended", None),
         PlanCause::VisitDeviated => ("visit_deviated", None),
         PlanCause::Request(words) => ("request", Some(words)),
+        PlanCause::WeatherChanged => ("weather_changed", None),
         PlanCause::SettingsChanged => ("settings_changed", None),
         PlanCause::Recovered => ("recovered", None),
     }
@@ -128,6 +129,7 @@ pub(super) fn to_plan_cause(label: &str, words: Option<&str>) -> Result<PlanCaus
         ("hold_ended", None) => Ok(PlanCause::HoldEnded),
         ("visit_deviated", None) => Ok(PlanCause::VisitDeviated),
         ("request", Some(words)) => Ok(PlanCause::Request(words.to_owned())),
+        ("weather_changed", None) => Ok(PlanCause::WeatherChanged),
         ("settings_changed", None) => Ok(PlanCause::SettingsChanged),
         ("recovered", None) => Ok(PlanCause::Recovered),
         _ => Err(UnknownLabel::new("cause of a plan", label)),

@@ -3,6 +3,7 @@
 use std::sync::Arc;
 
 use super::draft::Draft;
+use super::outdated::PlannedFor;
 use super::{Action, Event, Fact, NightBounds, Notice, Phase, Refusal, Reply, State};
 use crate::catalogue::TargetId;
 use crate::record::{HoldCause, PlanCause, PlanRevision};
@@ -143,7 +144,23 @@ impl Draft<'_> {
         {
             self.emit(Fact::WeatherNoted(sample))?;
         }
+        self.heed_conditions();
         Ok(Reply::Taken)
+    }
+
+    /// Wants a plan when the one in force was made for another wind or seeing. A sample is needed to
+    /// say so: while the feed is lost, nothing is known to have changed.
+    fn heed_conditions(&mut self) {
+        let in_use = matches!(self.state.phase(), Phase::Ready | Phase::Observing);
+        let (Some(planned_for), Some(latest), true) =
+            (self.senses.planned_for, self.senses.gate.latest(), in_use)
+        else {
+            return;
+        };
+        let now = PlannedFor::of(Some(latest), self.now.mono);
+        if planned_for.is_outdated_by(&now, self.rules()) {
+            self.want_plan(PlanCause::WeatherChanged);
+        }
     }
 
     fn planned(&mut self, revision: PlanRevision) -> Result<Reply, Refusal> {

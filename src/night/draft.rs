@@ -6,6 +6,7 @@ use std::sync::Arc;
 use super::accounting::{opens, seconds_ms, summary};
 use super::handout::Offer;
 use super::machine::{Done, DraftState, Machine, Senses};
+use super::outdated::PlannedFor;
 use super::timers::Timer;
 use super::{
     Action, Event, Fact, Gate, Lease, NightRules, Notice, Phase, PlanRequest, Refusal, Reply,
@@ -407,6 +408,8 @@ impl<'a> Draft<'a> {
         let request = self.plan_request(cause, darkness);
         if let Some(request) = request {
             self.senses.pending = Some(request.number);
+            let planned_for = PlannedFor::of(request.weather.as_ref(), self.now.mono);
+            self.senses.planned_for = Some(planned_for);
             self.actions.push(Action::AskForPlan(Box::new(request)));
         }
     }

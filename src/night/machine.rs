@@ -14,6 +14,7 @@ use std::borrow::Cow;
 
 use super::draft::Draft;
 use super::gate::Gate;
+use super::outdated::PlannedFor;
 use super::timers::{Timer, Timers};
 use super::{Action, Event, Fact, FoldError, NightRules, Notice, Refusal, Reply, Stamp, State};
 use super::{Verdict, accounting::seconds_ms};
@@ -32,6 +33,8 @@ pub(super) struct Senses {
     pub(super) pending: Option<u32>,
     /// A plan that is wanted once the pending one has come.
     pub(super) wanted: Option<PlanCause>,
+    /// The weather that the last plan was asked for with; `None` until there is one.
+    pub(super) planned_for: Option<PlannedFor>,
 }
 
 /// The night keeper.
@@ -94,6 +97,7 @@ impl Machine {
                 last: now,
                 pending: None,
                 wanted: None,
+                planned_for: None,
             },
             rules,
             arrears: Vec::new(),

@@ -14,6 +14,7 @@ mod gate;
 mod handout;
 mod log;
 mod machine;
+mod outdated;
 mod phase;
 mod report;
 mod rules;
@@ -32,7 +33,7 @@ pub use report::{NightReport, Remark, RevisionNote};
 pub use rules::{
     CLOCK_STEP_MS, CLOSING_LIMIT_S, EXTENSION_LIMIT_S, FAILED_STARTS_LIMIT, FUTURE_TOLERANCE_S,
     HandOut, LEASE_MARGIN_S, LEDGER_RETRY_S, NightRules, PLAN_RETRY_S, REPLAN_AFTER_S,
-    SLIP_TOLERANCE_S, WEATHER_NOTE_EVERY_S,
+    SEEING_REPLAN_RATIO, SLIP_TOLERANCE_S, WEATHER_NOTE_EVERY_S, WEATHER_REPLAN_EVERY_S,
 };
 pub use state::{FoldError, Pause, State, Urgency};
 pub use timers::{Timer, Timers};

@@ -1,5 +1,6 @@
 //! What the night is run by: limits in time, each with its default and the reason for it.
 
+use crate::catalogue::Survey;
 use crate::time::SpanSet;
 use crate::weather::WeatherRules;
 
@@ -23,6 +24,12 @@ pub const CLOCK_STEP_MS: i64 = 2000;
 pub const FUTURE_TOLERANCE_S: f64 = 60.0;
 /// A weather sample is kept in the ledger at least so often, seconds.
 pub const WEATHER_NOTE_EVERY_S: f64 = 600.0;
+/// The rest of the night is planned afresh for wind or seeing at most so often, seconds: a visit
+/// takes about as long.
+pub const WEATHER_REPLAN_EVERY_S: f64 = 900.0;
+/// Seeing better or worse by this factor wants other exposures: through a fibre that is well
+/// matched to it, they then take about twice or half as long.
+pub const SEEING_REPLAN_RATIO: f64 = 1.4;
 /// After a failed plan the next is asked for so much later, seconds.
 pub const PLAN_RETRY_S: f64 = 60.0;
 /// A ledger that could not be written is tried again so much later, seconds.
@@ -64,6 +71,15 @@ pub struct NightRules {
     pub future_tolerance_s: f64,
     /// See [`WEATHER_NOTE_EVERY_S`].
     pub weather_note_every_s: f64,
+    /// A stronger wind than this keeps the telescope from pointing towards it, m/s; `None`: none
+    /// does.
+    pub wind_avoided_above_m_s: Option<f64>,
+    /// The zenith seeing that a plan takes where no feed tells it, arcseconds; `None`: not known.
+    pub typical_seeing_arcsec: Option<f64>,
+    /// See [`WEATHER_REPLAN_EVERY_S`].
+    pub weather_replan_every_s: f64,
+    /// See [`SEEING_REPLAN_RATIO`].
+    pub seeing_replan_ratio: f64,
     /// See [`PLAN_RETRY_S`].
     pub plan_retry_s: f64,
     /// See [`LEDGER_RETRY_S`].
@@ -73,6 +89,17 @@ pub struct NightRules {
 }
 
 impl NightRules {
+    /// These weather rules for the nights of a survey: its blocked spans, the wind that its telescope
+    /// avoids, its typical seeing, and every other limit at its default.
+    pub fn for_survey(weather: WeatherRules, survey: &Survey) -> Self {
+        NightRules {
+            blocked: survey.allocation.blocked.clone(),
+            wind_avoided_above_m_s: survey.telescope.wind.as_ref().map(|wind| wind.above_m_s),
+            typical_seeing_arcsec: Some(survey.planning.typical_seeing_arcsec),
+            ..NightRules::new(weather)
+        }
+    }
+
     /// These weather rules and every other limit at its default.
     pub fn new(weather: WeatherRules) -> Self {
         NightRules {
@@ -87,6 +114,10 @@ impl NightRules {
             clock_step_ms: CLOCK_STEP_MS,
             future_tolerance_s: FUTURE_TOLERANCE_S,
             weather_note_every_s: WEATHER_NOTE_EVERY_S,
+            wind_avoided_above_m_s: None,
+            typical_seeing_arcsec: None,
+            weather_replan_every_s: WEATHER_REPLAN_EVERY_S,
+            seeing_replan_ratio: SEEING_REPLAN_RATIO,
             plan_retry_s: PLAN_RETRY_S,
             ledger_retry_s: LEDGER_RETRY_S,
             failed_starts_limit: FAILED_STARTS_LIMIT,

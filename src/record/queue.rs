@@ -88,6 +88,8 @@ pub enum PlanCause {
     VisitDeviated,
     /// Somebody asked: urgent target, pause, skip, limits; in their words.
     Request(String),
+    /// Wind or seeing are no longer those that the queue was planned for.
+    WeatherChanged,
     /// The settings changed on disk.
     SettingsChanged,
     /// The daemon came back in the middle of a night.

@@ -128,6 +128,7 @@ pub(super) fn plan_cause(cause: &PlanCause) -> (&'static str, String) {
         PlanCause::HoldEnded => plain("hold_ended", "a hold ended"),
         PlanCause::VisitDeviated => plain("visit_deviated", "a visit did not go as planned"),
         PlanCause::Request(words) => ("request", format!("asked for: {words}")),
+        PlanCause::WeatherChanged => plain("weather_changed", "wind or seeing changed"),
         PlanCause::SettingsChanged => plain("settings_changed", "the settings changed"),
         PlanCause::Recovered => plain("recovered", "came back within the night"),
     }

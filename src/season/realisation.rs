@@ -58,9 +58,8 @@ pub(super) struct Shared<'a> {
 impl Realisation {
     /// At the season's beginning, with the history that it starts from.
     pub(super) fn new(ask: &SeasonAsk, settings: &Settings, history: History, number: u32) -> Self {
-        let mut rules = NightRules::new(settings.weather.clone());
-        rules.blocked = settings.survey.allocation.blocked.clone();
         let survey = &settings.survey;
+        let rules = NightRules::for_survey(settings.weather.clone(), survey);
         let stars = survey.targets.iter().map(|target| StarRealised {
             caught: to_catch(target).map(|_| false).collect(),
             ..StarRealised::default()

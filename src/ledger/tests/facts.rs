@@ -153,6 +153,7 @@ fn plan_cause() -> impl Strategy<Value = PlanCause> {
         Just(PlanCause::VisitDeviated),
         words().prop_map(PlanCause::Request),
         Just(PlanCause::SettingsChanged),
+        Just(PlanCause::WeatherChanged),
         Just(PlanCause::Recovered)
     ]
 }
