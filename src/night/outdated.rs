@@ -115,16 +115,16 @@ mod tests {
         check(&windy, weather(900, (11.0, 10.0), 1.0), false);
         check(&windy, weather(900, (11.0, 30.0), 1.0), true);
         check(&windy, weather(900, (8.0, 350.0), 1.0), true);
-        check(&plan, weather(900, (8.0, 350.0), 1.39), false);
-        check(&plan, weather(900, (8.0, 350.0), 1.41), true);
-        check(&plan, weather(900, (8.0, 350.0), 0.7), true);
+        check(&plan, weather(900, (8.0, 350.0), 1.49), false);
+        check(&plan, weather(900, (8.0, 350.0), 1.51), true);
+        check(&plan, weather(900, (8.0, 350.0), 0.65), true);
         // The first plan of a night is asked for before there is any weather.
         let mut typical = rules();
         typical.typical_seeing_arcsec = Some(1.0);
         let blind = PlannedFor::of(None, MonotonicMs(0));
-        assert!(blind.is_outdated_by(&weather(900, (1.0, 0.0), 1.5), &typical));
+        assert!(blind.is_outdated_by(&weather(900, (1.0, 0.0), 1.6), &typical));
         assert!(!blind.is_outdated_by(&weather(900, (1.0, 0.0), 1.3), &typical));
-        assert!(!blind.is_outdated_by(&weather(900, (1.0, 0.0), 1.5), &rules()));
+        assert!(!blind.is_outdated_by(&weather(900, (1.0, 0.0), 1.6), &rules()));
         // A feed without these quantities outdates nothing, nor does a wind that is never avoided.
         check(&plan, PlannedFor::of(None, MonotonicMs(900_000)), false);
         let mut careless = rules();

@@ -27,9 +27,9 @@ pub const WEATHER_NOTE_EVERY_S: f64 = 600.0;
 /// The rest of the night is planned afresh for wind or seeing at most so often, seconds: a visit
 /// takes about as long.
 pub const WEATHER_REPLAN_EVERY_S: f64 = 900.0;
-/// Seeing better or worse by this factor wants other exposures: through a fibre that is well
-/// matched to it, they then take about twice or half as long.
-pub const SEEING_REPLAN_RATIO: f64 = 1.4;
+/// Seeing better or worse by this factor wants other exposures: where the star is wider than the
+/// fibre, they then take about twice or half as long.
+pub const SEEING_REPLAN_RATIO: f64 = 1.5;
 /// After a failed plan the next is asked for so much later, seconds.
 pub const PLAN_RETRY_S: f64 = 60.0;
 /// A ledger that could not be written is tried again so much later, seconds.
