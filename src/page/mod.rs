@@ -213,7 +213,7 @@ mod tests {
             assert!(STYLE.contains(&format!(".{} ", fill.class())), "{fill:?}");
         }
         for class in [
-            "number", "facts", "gallery", "legend", "swatch", "scroll", "wide",
+            "number", "facts", "gallery", "legend", "swatch", "scroll", "wide", "long",
         ] {
             assert!(STYLE.contains(&format!(".{class}")), "{class}");
         }

@@ -145,7 +145,10 @@ const VISIT_COLUMNS: [VisitColumn; 10] = [
     (Column::numbers("error, m/s"), |visit| {
         decimals(visit.rv_error_m_s, 2)
     }),
-    (Column::words("note"), |visit| html! { (visit.note) }),
+    (
+        Column::words("note"),
+        |visit| html! { @if !visit.note.is_empty() { span class="long" { (visit.note) } } },
+    ),
 ];
 
 fn decimals(value: Option<f64>, decimals: usize) -> Markup {
@@ -204,7 +207,7 @@ fn holds(report: &NightReport) -> Markup {
             span(hold.span),
             html! { (words::hold(hold.cause).replace(' ', "\u{a0}")) },
             html! { (format!("{:.1}", minutes(hold.span.length_ms()))) },
-            html! { (hold.detail) },
+            html! { span class="long" { (hold.detail) } },
         ]
     };
     let rows: Vec<Vec<Markup>> = report.holds.iter().map(row).collect();
@@ -233,7 +236,7 @@ fn revisions(report: &NightReport) -> Markup {
         vec![
             html! { (revision.number) },
             html! { (clock(revision.made_at)) },
-            html! { (words::plan_cause(&revision.cause).1) },
+            html! { span class="long" { (words::plan_cause(&revision.cause).1) } },
             html! { (revision.entries) },
             html! { (format!("{:.2}", revision.value)) },
             html! { @if let Some(share) = reached { (format!("{share:.1} %")) } },

@@ -141,11 +141,10 @@ pub(super) fn weather(course: &Course, name: &str) -> Markup {
         return html! {};
     };
     let x = Scale::time((*first, *last), plot.across());
-    // A little air around the line; a flat line gets some of its own.
-    let air = 0.08
-        * (course.greatest - course.least)
-            .max(0.02 * course.greatest.abs())
-            .max(1e-3);
+    // A little air around the line; a flat one gets a step of its last decimal.
+    let (_, decimals) = super::words::quantity(course.quantity);
+    let step = 10_f64.powi(-(decimals as i32));
+    let air = (0.08 * (course.greatest - course.least)).max(step);
     let y = Scale::linear((course.least - air, course.greatest + air), plot.upwards());
     let points: Vec<(f64, f64)> = course
         .values
