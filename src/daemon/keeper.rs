@@ -92,8 +92,7 @@ impl InventedWeather {
 
 /// The rules of the night that the settings ask for.
 pub(super) fn rules_of(settings: &Settings) -> NightRules {
-    let mut rules = NightRules::new(settings.weather.clone());
-    rules.blocked = settings.survey.allocation.blocked.clone();
+    let mut rules = NightRules::for_survey(settings.weather.clone(), &settings.survey);
     rules.lease_margin_s = settings.daemon.lease_margin_s;
     if let Some(push) = &settings.daemon.push {
         rules.hand_out = HandOut::Push;
