@@ -1,7 +1,11 @@
 //! `season`: what can honestly be promised.
 
+#[cfg(feature = "parquet")]
+mod columns;
 mod edit;
 mod json;
+mod page;
+mod pictures;
 mod text;
 
 use std::path::{Path, PathBuf};
@@ -89,6 +93,13 @@ struct Faces {
     /// Print JSON
     #[arg(long)]
     json: bool,
+    /// Write a page with pictures that needs nothing but itself
+    #[arg(long, value_name = "FILE")]
+    html: Option<PathBuf>,
+    /// Write every visit of every realisation as a Parquet file (in a program built with
+    /// --features parquet)
+    #[arg(long, value_name = "FILE")]
+    parquet: Option<PathBuf>,
 }
 
 /// What can be done with a season besides running it.
@@ -123,10 +134,12 @@ fn shard_of(text: &str) -> Result<(u32, u32), String> {
 /// Runs the command.
 pub fn run(args: &Args, global: &Global) -> Result<Exit, Trouble> {
     if let Some(Also::Merge { folders, faces }) = &args.also {
+        refuse_columns(faces)?;
         let (frame, all) = Store::merge(folders)?;
         show(faces, &frame, &all, None)?;
         return Ok(Exit::Fine);
     }
+    refuse_columns(&args.faces)?;
     let plain = stage(global)?;
     let first = plain.night(args.night.as_deref())?;
     plain.mention_earth_rotation(first.plus_nights(i64::from(args.nights)));
@@ -218,6 +231,12 @@ fn show(
     against: Option<&(String, Difference)>,
 ) -> Result<(), Trouble> {
     let results = SeasonResults::of(frame, all);
+    if let Some(path) = &faces.html {
+        output::write_whole(path, &page::of(frame, (&results, all), against))?;
+    }
+    if let Some(path) = &faces.parquet {
+        write_columns(path, frame, all)?;
+    }
     if faces.json {
         let mut value = json::of(frame, &results);
         if let Some((name, difference)) = against {
@@ -230,6 +249,32 @@ fn show(
         text.push_str(&text::difference(name, difference));
     }
     output::print(&text)
+}
+
+#[cfg(feature = "parquet")]
+fn write_columns(path: &Path, frame: &Frame, all: &[Realised]) -> Result<(), Trouble> {
+    columns::write(path, frame, all)
+}
+
+#[cfg(not(feature = "parquet"))]
+fn write_columns(_: &Path, _: &Frame, _: &[Realised]) -> Result<(), Trouble> {
+    // Refused before the run, see `refuse_columns`.
+    Ok(())
+}
+
+/// Told before a long run, not after it.
+fn refuse_columns(faces: &Faces) -> Result<(), Trouble> {
+    match &faces.parquet {
+        Some(path) if !cfg!(feature = "parquet") => {
+            let message = format!(
+                "{} cannot be written: this program has no Parquet",
+                path.display()
+            );
+            Err(Trouble::misuse(message)
+                .hint("build it with `cargo build --release --features parquet`"))
+        }
+        _ => Ok(()),
+    }
 }
 
 /// Shown on a terminal alone, with the rate and the time left.
