@@ -509,6 +509,94 @@ fn new_settings_are_taken_in_and_bad_ones_refused() {
     daemon.stop();
 }
 
+/// A full disk, by way of the limit on the size of files (util-linux `prlimit`): nothing is
+/// acknowledged that could not be kept, and all goes on when there is room again.
+#[test]
+fn a_full_disk_holds_the_night_and_loses_nothing() {
+    let place = Place::new();
+    let daemon = place.daemon(&format!("{DUSK},300"));
+    let lease = daemon.next("only");
+    let visit = lease["visit"].as_str().expect("a name").to_owned();
+    let limit = |size: &str| {
+        let id = daemon.child.id().to_string();
+        let set = Command::new("prlimit")
+            .args(["--pid", &id, &format!("--fsize={size}:unlimited")])
+            .status();
+        assert!(set.expect("prlimit runs").success());
+    };
+    limit("4096");
+    let path = format!("/v1/visits/{visit}/report");
+    let (code, refused) = daemon.post(&path, &done("r")).expect("an answer");
+    assert_eq!(
+        (code, &refused["code"]),
+        (503, &"ledger_down".into()),
+        "{refused}"
+    );
+    let causes = |s: &Value| {
+        let holds = s["holds"].as_array().expect("holds").iter();
+        holds.map(|hold| hold["cause"].clone()).collect::<Vec<_>>()
+    };
+    daemon.wait("hold", |s| causes(s) == ["ledger"] && s["state"] == "held");
+    assert_eq!(daemon.get("/healthz").0, 503);
+    assert_ne!(daemon.claim("more", "tester").expect("an answer").0, 200);
+    limit("unlimited");
+    daemon.wait("recovery", |s| causes(s).is_empty());
+    assert_eq!(daemon.get("/healthz").0, 200);
+    let (code, reported) = daemon.post(&path, &done("r")).expect("an answer");
+    assert_eq!(
+        (code, &reported["outcome"]),
+        (200, &"done".into()),
+        "{reported}"
+    );
+    daemon.stop();
+    let listed = visits(&place);
+    assert_eq!(
+        listed
+            .iter()
+            .filter(|v| v["visit"] == visit.as_str())
+            .count(),
+        1
+    );
+    assert_sound(&place);
+}
+
+#[test]
+fn a_silent_feed_holds_the_night() {
+    let place = Place::new();
+    // Nothing listens where the shipped configuration has its feed.
+    let daemon = place
+        .try_daemon(&["--clock", &format!("{DUSK},300"), "--live-weather"])
+        .expect("it starts");
+    let held = daemon.wait("hold", |s| s["state"] == "held");
+    assert_eq!(held["holds"][0]["cause"], "feed_lost", "{held:#}");
+    assert_eq!(daemon.claim("k", "tester").expect("an answer").0, 409);
+    // A release is the operator's own hold's end, and nothing else's.
+    let (code, _) = daemon
+        .post("/v1/release", &json!({"by": "tester"}))
+        .expect("an answer");
+    assert_eq!(code, 409);
+    assert_eq!(daemon.status()["state"], "held");
+    daemon.stop();
+}
+
+#[test]
+fn nights_without_darkness_pass_by() {
+    let place = Place::new();
+    let file = place.path().join("config/site.toml");
+    let site = std::fs::read_to_string(&file).expect("a site");
+    std::fs::write(
+        &file,
+        site.replace("latitude_deg = ", "latitude_deg = 78.0 # "),
+    )
+    .expect("written");
+    let daemon = place.daemon("2026-06-20T12:00:00Z,40000");
+    let third = daemon.wait("third night", |s| s["night"].as_str() >= Some("2026-06-22"));
+    assert!(third["darkness"].is_null(), "{third:#}");
+    assert_eq!(third["state"], "daylight");
+    daemon.stop();
+    assert_sound(&place);
+}
+
 /// Kills the daemon at random instants with claims and reports under way. `NIGHTWRIGHT_KILLS` sets
 /// how often, for a longer run.
 #[test]

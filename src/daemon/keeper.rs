@@ -5,11 +5,10 @@ use std::sync::Arc;
 use std::sync::mpsc::{Receiver, RecvTimeoutError, SyncSender};
 use std::time::Duration;
 
-use tokio::sync::oneshot;
-
 use super::InventedClock;
 use super::board::{Board, StarView, mode_label, status_of};
 use super::files::Folders;
+use super::message::{Answer, Message};
 use super::planner::Job;
 use crate::devices::chain;
 use crate::devices::{PushedVisits, Webhook};
@@ -17,7 +16,7 @@ use crate::ephemeris::{Observer, darkness};
 use crate::ledger::SqliteLedger;
 use crate::night::{
     Action, Event, Fact, FoldError, HandOut, Machine, NightBounds, NightReport, NightRules, Notice,
-    PlanRequest, Refusal, Reply, RunMode, Stamp, VisitReport,
+    PlanRequest, Refusal, RunMode, Stamp, VisitReport,
 };
 use crate::ports::{Clock, Ledger, LedgerFault, Notifier, Observatory, WeatherSource};
 use crate::record::{EntryKind, Outcome, QueueEntry, VisitId};
@@ -32,22 +31,6 @@ const ROUND_MS: u64 = 500;
 const INVENTED_POLL_MS: i64 = 30_000;
 /// More turns than this in one go round, and the keeper lets others speak first.
 const MOST_FOLLOW_UPS: usize = 64;
-
-/// What the keeper answers.
-pub type Answer = Result<Reply, Refusal>;
-
-/// What can be said to the keeper.
-#[derive(Debug)]
-pub enum Message {
-    /// Something happened; nobody waits for the answer.
-    Event(Event),
-    /// Somebody asks, and waits.
-    Ask(Event, oneshot::Sender<Answer>),
-    /// The settings on disk changed and were checked; or what was wrong with them.
-    Settings(Result<Box<Settings>, String>),
-    /// Finish: nothing is handed out any more, the ledger is closed.
-    Stop,
-}
 
 /// What the keeper works with.
 pub(super) struct Keeper {

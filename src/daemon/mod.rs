@@ -18,11 +18,12 @@ mod clock;
 mod files;
 pub mod http;
 mod keeper;
+mod message;
 mod planner;
 mod shell;
 mod token;
 
 pub use clock::InventedClock;
-pub use keeper::{Answer, Message};
+pub use message::{Answer, Message};
 pub use shell::{DaemonError, Options, Weather, run};
 pub use token::{Token, TokenError};

@@ -5,7 +5,7 @@ use std::sync::Arc;
 use std::sync::mpsc::{Receiver, SyncSender};
 use std::time::Instant;
 
-use super::keeper::Message;
+use super::message::Message;
 use crate::ephemeris::Observer;
 use crate::ledger::SqliteLedger;
 use crate::night::{Event, PlanRequest, ask_of, revision_of};

@@ -18,8 +18,9 @@ use super::board::{Board, CAUTION};
 use super::files::Folders;
 use super::http::{self, Face};
 use super::keeper::{
-    InventedWeather, Keeper, Message, TakeUpError, make_folder_of, resumed_clock, rules_of, take_up,
+    InventedWeather, Keeper, TakeUpError, make_folder_of, resumed_clock, rules_of, take_up,
 };
+use super::message::Message;
 use super::planner::plan_all;
 use super::token::{Token, TokenError};
 use crate::devices::{ClientFault, LiveFeed, PushedVisits, SystemClock, Webhook};

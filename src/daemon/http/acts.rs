@@ -1,13 +1,13 @@
 //! The operator's hand. Every act is a fact in the ledger, with who and when.
 
 use axum::Json;
-use axum::extract::{Path, State};
+use axum::extract::State;
 use serde::{Deserialize, Serialize};
 use utoipa::ToSchema;
 
-use super::body::Body;
+use super::body::{Body, Id};
 use super::visits::{LONGEST_TEXT, needed, short};
-use super::{Face, Problem};
+use super::{Face, Problem, Refusals};
 use crate::catalogue::TargetId;
 use crate::night::{Event, Reply};
 use crate::time::Utc;
@@ -19,10 +19,18 @@ const LONGEST_NAME: usize = 200;
 #[serde(deny_unknown_fields)]
 pub(super) struct WithReason {
     /// Who, for the record.
-    #[schema(min_length = 1, max_length = 200)]
+    #[schema(
+        min_length = 1,
+        max_length = 200,
+        pattern = r"^[^\x00-\x1F\x7F-\x9F]*[!-~][^\x00-\x1F\x7F-\x9F]*$"
+    )]
     by: String,
     /// Why, for the record.
-    #[schema(min_length = 1, max_length = 2000)]
+    #[schema(
+        min_length = 1,
+        max_length = 2000,
+        pattern = r"^[^\x00-\x1F\x7F-\x9F]*[!-~][^\x00-\x1F\x7F-\x9F]*$"
+    )]
     reason: String,
 }
 
@@ -31,7 +39,11 @@ pub(super) struct WithReason {
 #[serde(deny_unknown_fields)]
 pub(super) struct ByWhom {
     /// Who, for the record.
-    #[schema(min_length = 1, max_length = 200)]
+    #[schema(
+        min_length = 1,
+        max_length = 200,
+        pattern = r"^[^\x00-\x1F\x7F-\x9F]*[!-~][^\x00-\x1F\x7F-\x9F]*$"
+    )]
     by: String,
 }
 
@@ -40,12 +52,21 @@ pub(super) struct ByWhom {
 #[serde(deny_unknown_fields)]
 pub(super) struct UrgentBody {
     /// Who, for the record.
-    #[schema(min_length = 1, max_length = 200)]
+    #[schema(
+        min_length = 1,
+        max_length = 200,
+        pattern = r"^[^\x00-\x1F\x7F-\x9F]*[!-~][^\x00-\x1F\x7F-\x9F]*$"
+    )]
     by: String,
     /// Why, for the record.
-    #[schema(min_length = 1, max_length = 2000)]
+    #[schema(
+        min_length = 1,
+        max_length = 2000,
+        pattern = r"^[^\x00-\x1F\x7F-\x9F]*[!-~][^\x00-\x1F\x7F-\x9F]*$"
+    )]
     reason: String,
     /// Until when it is urgent, RFC 3339.
+    #[schema(format = DateTime)]
     until: String,
 }
 
@@ -54,10 +75,18 @@ pub(super) struct UrgentBody {
 #[serde(deny_unknown_fields)]
 pub(super) struct NoteBody {
     /// Who, for the record.
-    #[schema(min_length = 1, max_length = 200)]
+    #[schema(
+        min_length = 1,
+        max_length = 200,
+        pattern = r"^[^\x00-\x1F\x7F-\x9F]*[!-~][^\x00-\x1F\x7F-\x9F]*$"
+    )]
     by: String,
     /// What.
-    #[schema(min_length = 1, max_length = 2000)]
+    #[schema(
+        min_length = 1,
+        max_length = 2000,
+        pattern = r"^[^\x00-\x1F\x7F-\x9F]*[!-~][^\x00-\x1F\x7F-\x9F]*$"
+    )]
     text: String,
 }
 
@@ -101,15 +130,7 @@ fn known(id: &str) -> Result<TargetId, Problem> {
     post, path = "/v1/hold", request_body = WithReason, security(("token" = [])),
     responses(
         (status = 200, description = "Held", body = Done),
-        (status = 400, body = Problem, description = "Not JSON"),
-        (status = 401, body = Problem, description = "No token, or the wrong one"),
-        (status = 408, body = Problem, description = "Too slow"),
-        (status = 409, body = Problem, description = "Not possible now: see code"),
-        (status = 413, body = Problem, description = "Too long"),
-        (status = 415, body = Problem, description = "Not JSON"),
-        (status = 422, body = Problem, description = "Values that cannot be"),
-        (status = 429, body = Problem, description = "Busy"),
-        (status = 503, body = Problem, description = "The ledger cannot be written"),
+        Refusals,
     )
 )]
 pub(super) async fn hold(
@@ -132,15 +153,7 @@ pub(super) async fn hold(
     post, path = "/v1/release", request_body = ByWhom, security(("token" = [])),
     responses(
         (status = 200, description = "The operator holds nothing any more", body = Done),
-        (status = 400, body = Problem, description = "Not JSON"),
-        (status = 401, body = Problem, description = "No token, or the wrong one"),
-        (status = 408, body = Problem, description = "Too slow"),
-        (status = 409, body = Problem, description = "Not possible now: see code"),
-        (status = 413, body = Problem, description = "Too long"),
-        (status = 415, body = Problem, description = "Not JSON"),
-        (status = 422, body = Problem, description = "Values that cannot be"),
-        (status = 429, body = Problem, description = "Busy"),
-        (status = 503, body = Problem, description = "The ledger cannot be written"),
+        Refusals,
     )
 )]
 pub(super) async fn release(
@@ -156,15 +169,7 @@ pub(super) async fn release(
     post, path = "/v1/skip", request_body = ByWhom, security(("token" = [])),
     responses(
         (status = 200, description = "It will be ended", body = Done),
-        (status = 400, body = Problem, description = "Not JSON"),
-        (status = 401, body = Problem, description = "No token, or the wrong one"),
-        (status = 408, body = Problem, description = "Too slow"),
-        (status = 409, body = Problem, description = "No visit runs"),
-        (status = 413, body = Problem, description = "Too long"),
-        (status = 415, body = Problem, description = "Not JSON"),
-        (status = 422, body = Problem, description = "Values that cannot be"),
-        (status = 429, body = Problem, description = "Busy"),
-        (status = 503, body = Problem, description = "The ledger cannot be written"),
+        Refusals,
     )
 )]
 pub(super) async fn skip(
@@ -181,21 +186,12 @@ pub(super) async fn skip(
     params(("id" = String, Path, description = "The target")),
     responses(
         (status = 200, description = "Paused", body = Done),
-        (status = 400, body = Problem, description = "Not JSON"),
-        (status = 401, body = Problem, description = "No token, or the wrong one"),
-        (status = 404, body = Problem, description = "No such target"),
-        (status = 408, body = Problem, description = "Too slow"),
-        (status = 409, body = Problem, description = "Not possible now: see code"),
-        (status = 413, body = Problem, description = "Too long"),
-        (status = 415, body = Problem, description = "Not JSON"),
-        (status = 422, body = Problem, description = "Values that cannot be"),
-        (status = 429, body = Problem, description = "Busy"),
-        (status = 503, body = Problem, description = "The ledger cannot be written"),
+        Refusals,
     )
 )]
 pub(super) async fn pause(
     State(face): State<Face>,
-    Path(id): Path<String>,
+    Id(id): Id,
     Body(body): Body<WithReason>,
 ) -> Result<Json<Done>, Problem> {
     needed(&body.by, "by", LONGEST_NAME)?;
@@ -214,21 +210,12 @@ pub(super) async fn pause(
     params(("id" = String, Path, description = "The target")),
     responses(
         (status = 200, description = "Resumed", body = Done),
-        (status = 400, body = Problem, description = "Not JSON"),
-        (status = 401, body = Problem, description = "No token, or the wrong one"),
-        (status = 404, body = Problem, description = "No such target"),
-        (status = 408, body = Problem, description = "Too slow"),
-        (status = 409, body = Problem, description = "It is not paused"),
-        (status = 413, body = Problem, description = "Too long"),
-        (status = 415, body = Problem, description = "Not JSON"),
-        (status = 422, body = Problem, description = "Values that cannot be"),
-        (status = 429, body = Problem, description = "Busy"),
-        (status = 503, body = Problem, description = "The ledger cannot be written"),
+        Refusals,
     )
 )]
 pub(super) async fn resume(
     State(face): State<Face>,
-    Path(id): Path<String>,
+    Id(id): Id,
     Body(body): Body<ByWhom>,
 ) -> Result<Json<Done>, Problem> {
     needed(&body.by, "by", LONGEST_NAME)?;
@@ -245,21 +232,12 @@ pub(super) async fn resume(
     params(("id" = String, Path, description = "The target")),
     responses(
         (status = 200, description = "It goes first, where it can be observed", body = Done),
-        (status = 400, body = Problem, description = "Not JSON"),
-        (status = 401, body = Problem, description = "No token, or the wrong one"),
-        (status = 404, body = Problem, description = "No such target"),
-        (status = 408, body = Problem, description = "Too slow"),
-        (status = 409, body = Problem, description = "Not possible now: see code"),
-        (status = 413, body = Problem, description = "Too long"),
-        (status = 415, body = Problem, description = "Not JSON"),
-        (status = 422, body = Problem, description = "Values that cannot be"),
-        (status = 429, body = Problem, description = "Busy"),
-        (status = 503, body = Problem, description = "The ledger cannot be written"),
+        Refusals,
     )
 )]
 pub(super) async fn urgent(
     State(face): State<Face>,
-    Path(id): Path<String>,
+    Id(id): Id,
     Body(body): Body<UrgentBody>,
 ) -> Result<Json<Done>, Problem> {
     needed(&body.by, "by", LONGEST_NAME)?;
@@ -280,15 +258,7 @@ pub(super) async fn urgent(
     post, path = "/v1/notes", request_body = NoteBody, security(("token" = [])),
     responses(
         (status = 200, description = "Kept", body = Done),
-        (status = 400, body = Problem, description = "Not JSON"),
-        (status = 401, body = Problem, description = "No token, or the wrong one"),
-        (status = 408, body = Problem, description = "Too slow"),
-        (status = 409, body = Problem, description = "Not possible now: see code"),
-        (status = 413, body = Problem, description = "Too long"),
-        (status = 415, body = Problem, description = "Not JSON"),
-        (status = 422, body = Problem, description = "Values that cannot be"),
-        (status = 429, body = Problem, description = "Busy"),
-        (status = 503, body = Problem, description = "The ledger cannot be written"),
+        Refusals,
     )
 )]
 pub(super) async fn note(

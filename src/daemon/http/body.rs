@@ -1,13 +1,17 @@
 //! Bodies in and out, and what a refusal looks like.
 
+use std::collections::BTreeMap;
+
 use axum::Json;
 use axum::extract::rejection::JsonRejection;
-use axum::extract::{FromRequest, Request};
+use axum::extract::{FromRequest, FromRequestParts, Path, Request};
+use axum::http::request::Parts;
 use axum::http::{HeaderValue, StatusCode, header};
 use axum::response::{IntoResponse, Response};
 use serde::Serialize;
 use serde::de::DeserializeOwned;
-use utoipa::ToSchema;
+use utoipa::openapi::{Content, Ref, RefOr, ResponseBuilder};
+use utoipa::{IntoResponses, ToSchema};
 
 use crate::night::Refusal;
 
@@ -180,6 +184,57 @@ impl IntoResponse for Problem {
                 .insert(header::WWW_AUTHENTICATE, scheme);
         }
         response
+    }
+}
+
+/// What every act may be refused with, for the description.
+pub(super) struct Refusals;
+
+impl IntoResponses for Refusals {
+    fn responses() -> BTreeMap<String, RefOr<utoipa::openapi::Response>> {
+        let problem = || Content::new(Some(Ref::from_schema_name("Problem")));
+        [
+            ("400", "Not JSON, or an address that cannot be read"),
+            ("401", "No token, or the wrong one"),
+            ("404", "No such visit or target"),
+            ("408", "Too slow"),
+            ("409", "Not possible now: see code"),
+            ("413", "Too long"),
+            ("415", "Not JSON"),
+            ("422", "Values that cannot be"),
+            ("429", "Busy"),
+            (
+                "503",
+                "The ledger cannot be written, or the daemon is stopping: nothing was done",
+            ),
+        ]
+        .into_iter()
+        .map(|(status, description)| {
+            let response = ResponseBuilder::new()
+                .description(description)
+                .content("application/json", problem())
+                .build();
+            (status.to_owned(), RefOr::T(response))
+        })
+        .collect()
+    }
+}
+
+/// The name in an address.
+pub(super) struct Id(pub String);
+
+impl<S: Send + Sync> FromRequestParts<S> for Id {
+    type Rejection = Problem;
+
+    async fn from_request_parts(parts: &mut Parts, state: &S) -> Result<Self, Problem> {
+        match Path::<String>::from_request_parts(parts, state).await {
+            Ok(Path(id)) => Ok(Id(id)),
+            Err(rejection) => Err(Problem::new(
+                StatusCode::BAD_REQUEST,
+                "address",
+                rejection.body_text(),
+            )),
+        }
     }
 }
 

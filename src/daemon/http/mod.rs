@@ -23,10 +23,11 @@ use utoipa_axum::router::OpenApiRouter;
 use utoipa_axum::routes;
 
 use super::board::Board;
-use super::keeper::Message;
+use super::message::Message;
 use super::token::Token;
 use crate::night::{Event, Refusal, Reply, RunMode};
 pub use body::Problem;
+use body::Refusals;
 
 /// Nothing that is said to the daemon is longer.
 const LONGEST_BODY: usize = 16 * 1024;
@@ -91,6 +92,7 @@ fn refused(refusal: &Refusal) -> Problem {
         description = "Choosing and recording the visits of a night. This program chooses \
 observations; it does not protect people, the dome or the optics."
     ),
+    components(schemas(Problem)),
     modifiers(&BearerToken)
 )]
 struct Description;

@@ -1,12 +1,12 @@
 //! The observatory's side: claim, extend, report.
 
 use axum::Json;
-use axum::extract::{Path, State};
+use axum::extract::State;
 use serde::Deserialize;
 use utoipa::ToSchema;
 
-use super::body::Body;
-use super::{Face, Problem};
+use super::body::{Body, Id};
+use super::{Face, Problem, Refusals};
 use crate::daemon::board::LeaseView;
 use crate::night::{Event, Reply, VisitReport};
 use crate::record::{LossCause, Outcome, VisitId};
@@ -21,10 +21,18 @@ const LONGEST_KEY: usize = 200;
 #[serde(deny_unknown_fields)]
 pub(super) struct ClaimBody {
     /// Chosen by the claimer, new for every visit: the same key gets the same visit again.
-    #[schema(min_length = 1, max_length = 200)]
+    #[schema(
+        min_length = 1,
+        max_length = 200,
+        pattern = r"^[^\x00-\x1F\x7F-\x9F]*[!-~][^\x00-\x1F\x7F-\x9F]*$"
+    )]
     key: String,
     /// Who claims, for people.
-    #[schema(min_length = 1, max_length = 200)]
+    #[schema(
+        min_length = 1,
+        max_length = 200,
+        pattern = r"^[^\x00-\x1F\x7F-\x9F]*[!-~][^\x00-\x1F\x7F-\x9F]*$"
+    )]
     holder: String,
 }
 
@@ -33,7 +41,7 @@ pub(super) struct ClaimBody {
 #[serde(deny_unknown_fields)]
 pub(super) struct ExtendBody {
     /// Needed from now on, seconds.
-    #[schema(minimum = 0.0, maximum = 86400.0)]
+    #[schema(exclusive_minimum = 0.0, maximum = 1800.0)]
     seconds: f64,
 }
 
@@ -72,25 +80,34 @@ pub(super) enum CauseWord {
 #[serde(deny_unknown_fields)]
 pub(super) struct ReportBody {
     /// Chosen by the reporter: the same key again changes nothing.
-    #[schema(min_length = 1, max_length = 200)]
+    #[schema(
+        min_length = 1,
+        max_length = 200,
+        pattern = r"^[^\x00-\x1F\x7F-\x9F]*[!-~][^\x00-\x1F\x7F-\x9F]*$"
+    )]
     key: String,
     /// How the visit ended.
     outcome: OutcomeWord,
     /// Why it was lost.
     cause: Option<CauseWord>,
     /// First shutter opening, RFC 3339.
+    #[schema(format = DateTime)]
     exposing_start: Option<String>,
     /// Last read-out, RFC 3339.
+    #[schema(format = DateTime)]
     exposing_end: Option<String>,
     /// Open-shutter time, seconds.
+    #[schema(minimum = 0.0, maximum = 86400.0)]
     exposed_s: Option<f64>,
     /// Signal-to-noise reached.
+    #[schema(minimum = 0.0)]
     snr: Option<f64>,
     /// Velocity error, m/s.
+    #[schema(minimum = 0.0)]
     rv_error_m_s: Option<f64>,
     /// Anything else.
     #[serde(default)]
-    #[schema(max_length = 2000)]
+    #[schema(max_length = 2000, pattern = r"^[^\x00-\x1F\x7F-\x9F]*$")]
     note: String,
 }
 
@@ -147,15 +164,7 @@ pub(super) fn needed(text: &str, name: &str, longest: usize) -> Result<(), Probl
     security(("token" = [])),
     responses(
         (status = 200, description = "The visit to carry out", body = LeaseView),
-        (status = 400, body = Problem, description = "Not JSON"),
-        (status = 401, body = Problem, description = "No token, or the wrong one"),
-        (status = 408, body = Problem, description = "Too slow"),
-        (status = 409, body = Problem, description = "Nothing to hand out now: see code"),
-        (status = 413, body = Problem, description = "Too long"),
-        (status = 415, body = Problem, description = "Not JSON"),
-        (status = 422, body = Problem, description = "Not a claim"),
-        (status = 429, body = Problem, description = "Busy"),
-        (status = 503, body = Problem, description = "The ledger cannot be written"),
+        Refusals,
     )
 )]
 pub(super) async fn claim(
@@ -192,21 +201,12 @@ pub(super) async fn claim(
     security(("token" = [])),
     responses(
         (status = 200, description = "The lease's new end", body = Extended),
-        (status = 400, body = Problem, description = "Not JSON"),
-        (status = 401, body = Problem, description = "No token, or the wrong one"),
-        (status = 404, body = Problem, description = "No such visit"),
-        (status = 408, body = Problem, description = "Too slow"),
-        (status = 409, body = Problem, description = "Not possible now: see code"),
-        (status = 413, body = Problem, description = "Too long"),
-        (status = 415, body = Problem, description = "Not JSON"),
-        (status = 422, body = Problem, description = "Not a number of seconds"),
-        (status = 429, body = Problem, description = "Busy"),
-        (status = 503, body = Problem, description = "The ledger cannot be written"),
+        Refusals,
     )
 )]
 pub(super) async fn extend(
     State(face): State<Face>,
-    Path(id): Path<String>,
+    Id(id): Id,
     Body(body): Body<ExtendBody>,
 ) -> Result<Json<Extended>, Problem> {
     let event = Event::Extend {
@@ -233,21 +233,12 @@ pub(super) async fn extend(
     security(("token" = [])),
     responses(
         (status = 200, description = "The visit as it stands", body = Reported),
-        (status = 400, body = Problem, description = "Not JSON"),
-        (status = 401, body = Problem, description = "No token, or the wrong one"),
-        (status = 404, body = Problem, description = "No such visit"),
-        (status = 408, body = Problem, description = "Too slow"),
-        (status = 409, body = Problem, description = "Reported otherwise before, or a key used twice"),
-        (status = 413, body = Problem, description = "Too long"),
-        (status = 415, body = Problem, description = "Not JSON"),
-        (status = 422, body = Problem, description = "Values that cannot be"),
-        (status = 429, body = Problem, description = "Busy"),
-        (status = 503, body = Problem, description = "The ledger cannot be written: report again"),
+        Refusals,
     )
 )]
 pub(super) async fn report(
     State(face): State<Face>,
-    Path(id): Path<String>,
+    Id(id): Id,
     Body(body): Body<ReportBody>,
 ) -> Result<Json<Reported>, Problem> {
     needed(&body.key, "key", LONGEST_KEY)?;
