@@ -128,3 +128,43 @@ fn nights_without_darkness_alone_are_refused_and_leave_no_ledger() {
     );
     assert!(!ledger.exists());
 }
+
+/// Seeing changes in this night while a star that is wanted once a night is being observed, and the
+/// rest of the night is planned afresh: the star must not come again.
+#[test]
+fn a_star_under_way_is_not_planned_again() {
+    let folder = tempfile::tempdir().expect("a scratch folder");
+    let ledger = folder.path().join("night.sqlite");
+    let ledger = ledger.to_str().expect("a path in UTF-8");
+    let night = [
+        "rehearse",
+        "--night",
+        "2026-12-01",
+        "--seed",
+        "3",
+        "--ledger",
+        ledger,
+    ];
+    assert!(nightwright(&night).status.success());
+    let list = nightwright(&["log", "list", "--json", "--ledger", ledger]);
+    let visits: Value = serde_json::from_slice(&list.stdout).expect("it prints JSON");
+    let mut done = std::collections::BTreeMap::new();
+    for visit in visits.as_array().expect("an array") {
+        if visit["kind"] == "science" && visit["outcome"] == "done" {
+            *done.entry(visit["target"].to_string()).or_insert(0) += 1;
+        }
+    }
+    let once = [
+        "\"KR0148+08\"",
+        "\"KR2352-05\"",
+        "\"KR0207-60\"",
+        "\"KR0340-32\"",
+    ];
+    assert!(once.iter().any(|star| done.contains_key(*star)), "{done:?}");
+    for star in once {
+        assert!(
+            done.get(star).is_none_or(|count| *count == 1),
+            "{star}: {done:?}"
+        );
+    }
+}

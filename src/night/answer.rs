@@ -2,9 +2,10 @@
 
 use std::sync::Arc;
 
-use super::PlanRequest;
+use super::{Lease, PlanRequest};
 use crate::plan::{Ask, Planned, Published, Urgent, Wind};
-use crate::record::{PlanRevision, Visit};
+use crate::record::{Outcome, PlanRevision, Visit};
+use crate::time::{NightDate, Span};
 use crate::weather::Quantity;
 
 /// What the planner is asked for by a request.
@@ -14,6 +15,8 @@ pub fn ask_of(request: &PlanRequest) -> Ask {
     let wind = value(Quantity::WindMS)
         .zip(weather.and_then(|sample| sample.wind_from))
         .map(|(speed_m_s, from)| Wind { speed_m_s, from });
+    let fixed = request.fixed.as_deref();
+    let fixed = fixed.map(|lease| as_planned(lease, request.night));
     let published = request.previous.iter().flat_map(|plan| &plan.entries);
     Ask {
         from: request.from,
@@ -25,6 +28,7 @@ pub fn ask_of(request: &PlanRequest) -> Ask {
             .tonight
             .iter()
             .map(|visit| Visit::clone(Arc::as_ref(visit)))
+            .chain(fixed)
             .collect(),
         paused: request
             .paused
@@ -48,6 +52,30 @@ pub fn ask_of(request: &PlanRequest) -> Ask {
                 start: entry.start,
             })
             .collect(),
+    }
+}
+
+/// The visit under way as it is meant to end: what comes after it is planned as if it had, or the
+/// star that is being observed would be planned again.
+fn as_planned(lease: &Lease, night: NightDate) -> Visit {
+    let entry = &lease.entry;
+    Visit {
+        id: lease.visit.clone(),
+        night,
+        kind: entry.kind,
+        subject: entry.subject.clone(),
+        began: lease.granted,
+        exposing: Span::new(entry.start, entry.end),
+        exposed_s: entry.exposures.total_s(),
+        planned: entry.exposures,
+        outcome: Outcome::Done,
+        credit: 1.0,
+        airmass: entry.airmass,
+        snr: None,
+        rv_error_m_s: None,
+        predicted_rv_error_m_s: entry.predicted_rv_error_m_s,
+        mid_bjd_tdb: None,
+        note: String::new(),
     }
 }
 
